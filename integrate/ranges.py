@@ -1,0 +1,378 @@
+"""The range of initial mass, cut into the spans that sets, joins and edges serve.
+
+Every star that is born belongs to exactly one span, so that budgets close.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
+from itertools import pairwise
+
+import numpy as np
+from numpy.typing import NDArray
+
+from steelyard.yields.curve import Curve
+from steelyard.yields.errors import InputError
+
+from .sources import Edges, Join, StellarSource
+from .tracks import Columns, Track
+
+Array = NDArray[np.float64]
+
+
+@dataclass(frozen=True, eq=False)
+class Span:
+    """A range of initial mass served in one way.
+
+    Attributes
+    ----------
+    lo, hi : float
+        Msun.
+    owner : int
+        Position of the stellar source that the ejecta count for.
+    how : str
+        Id of the set, or the policy of the join or edge.
+    curve : Curve
+        From lo to hi; columns as in `Columns`.
+    collapse : bool
+        Whether the stars that die here are core-collapse events.
+    implodes : bool
+        Whether they fall in a window that implodes.
+    """
+
+    lo: float
+    hi: float
+    owner: int
+    how: str
+    curve: Curve
+    collapse: bool = False
+    implodes: bool = False
+
+
+@dataclass(frozen=True, eq=False)
+class Ground:
+    """What the joins and edges need to know of the population.
+
+    Attributes
+    ----------
+    columns : Columns
+    birth : ndarray, shape (species,)
+        Mass fractions at birth.
+    limits : pair of float
+        Limits of the mass function, Msun.
+    """
+
+    columns: Columns
+    birth: Array
+    limits: tuple[float, float]
+
+    def row(self, mass: float, remnant: float, birth: Array | None = None) -> Array:
+        """Return the row of a star that ejects ``mass - remnant`` at birth composition."""
+        x = self.birth if birth is None else birth
+        ejected = mass - remnant
+        accounts = [ejected * (1 - float(x.sum())), 0.0, ejected, remnant, 0.0]
+        return np.concatenate([ejected * x, np.zeros(len(x)), accounts])
+
+
+def spans(
+    sources: Sequence[StellarSource],
+    tracks: Sequence[Sequence[Track]],
+    joins: Sequence[Join],
+    edges: Edges,
+    ground: Ground,
+) -> tuple[list[Span], list[str]]:
+    """Cut the range of initial mass into spans.
+
+    Parameters
+    ----------
+    sources : sequence of StellarSource
+    tracks : sequence of sequence of Track
+        The entries of each source, in series.
+    joins : sequence of Join
+    edges : Edges
+    ground : Ground
+
+    Returns
+    -------
+    spans : list of Span
+        Adjoining, in order of mass, from the lower to the upper limit of the mass function.
+    notes : list of str
+        What a reader of the result has to know.
+
+    Raises
+    ------
+    InputError
+        Sources overlap, or there is a gap between them without a join.
+    """
+    notes: list[str] = []
+    policy = {j.between: j.policy for j in joins}
+    served: list[list[Span]] = []
+    at = 0
+    for i, (source, entries) in enumerate(zip(sources, tracks, strict=True)):
+        total = sum(len(t.models) for ts in tracks for t in ts)
+        own, at = _series(i, source, entries, policy, ground, at, total, notes)
+        served.append(own)
+    order = sorted(range(len(sources)), key=lambda i: served[i][0].lo)
+    out: list[Span] = []
+    for i in order:
+        if out:
+            out += _between(out[-1], served[i][0], sources, tracks, policy, ground, notes)
+        out += served[i]
+    out = _edges(out, edges, ground)
+    _check_joins(joins, sources, tracks, order)
+    return _events(out, sources, tracks, order, ground, notes), notes
+
+
+def _series(
+    owner: int,
+    source: StellarSource,
+    entries: Sequence[Track],
+    policy: dict[tuple[str, str], str],
+    ground: Ground,
+    at: int,
+    total: int,
+    notes: list[str],
+) -> tuple[list[Span], int]:
+    """The spans of one source: each entry where it has models and none before it has."""
+    taken: list[Span] = []
+    for entry in entries:
+        share = np.zeros((len(entry.curve.mass), total))
+        share[:, at : at + len(entry.models)] = entry.curve.share
+        at += len(entry.models)
+        curve = replace(entry.curve, share=share)
+        lo, hi = curve.span
+        if source.limits is not None:
+            lo, hi = max(lo, source.limits[0]), min(hi, source.limits[1])
+        for a, b in _free(lo, hi, [(s.lo, s.hi) for s in taken]):
+            taken.append(Span(a, b, owner, entry.name, curve.between(a, b)))
+    taken.sort(key=lambda s: s.lo)
+    if not taken:
+        spans_text = ", ".join(f"{t.curve.span[0]:g}-{t.curve.span[1]:g}" for t in entries)
+        raise InputError(
+            f"no set has models inside its limits (they reach {spans_text} Msun)",
+            where=f"source {source.kind}",
+            mend="widen limits, or name other sets",
+        )
+    out = [taken[0]]
+    for span in taken[1:]:
+        before = out[-1]
+        if span.lo > before.hi:
+            chosen = policy.get((before.how, span.how), "bridge")
+            out.append(Span(before.hi, span.lo, owner, chosen, _joined(chosen, before, span, ground)))
+        out.append(span)
+    if len(entries) > 1:
+        unused = [t.name for t in entries if t.name not in {s.how for s in taken}]
+        notes += [f"{source.kind}: {name} serves no mass that the sets before it don't" for name in unused]
+    return out, at
+
+
+def _free(lo: float, hi: float, taken: list[tuple[float, float]]) -> list[tuple[float, float]]:
+    """The parts of (lo, hi) that no range of `taken` covers."""
+    parts = [(lo, hi)] if hi > lo else []
+    for a, b in taken:
+        parts = [piece for c, d in parts for piece in ((c, min(d, a)), (max(c, b), d)) if piece[1] > piece[0]]
+    return parts
+
+
+def _between(
+    lower: Span,
+    upper: Span,
+    sources: Sequence[StellarSource],
+    tracks: Sequence[Sequence[Track]],
+    policy: dict[tuple[str, str], str],
+    ground: Ground,
+    notes: list[str],
+) -> list[Span]:
+    """The join between two neighbouring sources, its ejecta shared out at the first collapse mass."""
+    a, b = sources[lower.owner], sources[upper.owner]
+    if upper.lo < lower.hi:
+        raise InputError(
+            f"sources {a.kind} and {b.kind} overlap: {a.kind} serves up to {lower.hi:g} Msun,"
+            f" {b.kind} from {upper.lo:g}",
+            mend="set limits of the sources so that they don't",
+        )
+    if upper.lo == lower.hi:
+        return []
+    chosen = policy.get((a.kind, b.kind))
+    if chosen is None:
+        raise InputError(
+            f"there is a gap without a join: {lower.hi:g}-{upper.lo:g} Msun between {a.kind} and {b.kind}",
+            mend=f'add [[join]] between = ["{a.kind}", "{b.kind}"] with policy = "bridge" or another',
+        )
+    lower, upper = _filled(lower, upper, tracks, ground, notes)
+    curve = _joined(chosen, lower, upper, ground)
+    edge = min(max(b.events_from, lower.hi), upper.lo) if b.kind == "core-collapse" else upper.lo
+    out = []
+    if edge > lower.hi:
+        out.append(Span(lower.hi, edge, lower.owner, chosen, curve.between(lower.hi, edge)))
+    if edge < upper.lo:
+        out.append(Span(edge, upper.lo, upper.owner, chosen, curve.between(edge, upper.lo)))
+    return out
+
+
+def _filled(
+    lower: Span, upper: Span, tracks: Sequence[Sequence[Track]], ground: Ground, notes: list[str]
+) -> tuple[Span, Span]:
+    """The two ends of a join, each lent birth composition for what only the other follows."""
+    ends = []
+    follow = [_followed(lower, tracks, True), _followed(upper, tracks, False)]
+    for span, row, own, other in ((lower, -1, *follow), (upper, 0, *reversed(follow))):
+        lent = other & ~own
+        values = span.curve.values.copy()
+        if lent.any():
+            c = ground.columns
+            added = np.where(lent, ground.birth * values[row, c.account("ejected")], 0.0)
+            values[row, c.total] += added
+            values[row, c.account("rest_total")] -= added.sum()
+            names = ", ".join(s for s, x in zip(c.species, lent, strict=True) if x)
+            notes.append(
+                f"join {lower.hi:g}-{upper.lo:g} Msun: {span.how} doesn't follow {names};"
+                " its end is taken at birth composition"
+            )
+        ends.append(replace(span, curve=replace(span.curve, values=values)))
+    return ends[0], ends[1]
+
+
+def _followed(span: Span, tracks: Sequence[Sequence[Track]], last: bool) -> NDArray[np.bool_]:
+    for entry in tracks[span.owner]:
+        if entry.name == span.how:
+            return entry.followed
+    return tracks[span.owner][-1 if last else 0].followed
+
+
+def _joined(policy: str, lower: Span, upper: Span, ground: Ground) -> Curve:
+    """The curve of a join, a straight line in mass."""
+    lo, hi = lower.hi, upper.lo
+    below, above = lower.curve.values[-1], upper.curve.values[0]
+    share = np.zeros((2, lower.curve.share.shape[1]))
+    if policy == "bridge":
+        share[0], share[1] = lower.curve.share[-1], upper.curve.share[0]
+        values = np.stack([below, above])
+    elif policy == "reach-up":
+        share[0], share[1] = lower.curve.share[-1], lower.curve.share[-1] * hi / lo
+        values = np.stack([below, below * (hi / lo)])
+    elif policy == "reach-down":
+        share[0], share[1] = upper.curve.share[0] * lo / hi, upper.curve.share[0]
+        values = np.stack([above * (lo / hi), above])
+    elif policy == "return-only":
+        remnant = ground.columns.account("remnant")
+        values = np.stack([ground.row(lo, below[remnant]), ground.row(hi, above[remnant])])
+    else:
+        values = np.stack([ground.row(lo, lo), ground.row(hi, hi)])
+    return Curve(np.array([lo, hi]), values, None, share)
+
+
+def _edges(inner: list[Span], edges: Edges, ground: Ground) -> list[Span]:
+    """Add what lies beyond the sources, and cut all to the mass function's limits."""
+    lo, hi = ground.limits
+    out = list(inner)
+    first, last = inner[0], inner[-1]
+    remnant = ground.columns.account("remnant")
+    if lo < first.lo:
+        kept = first.curve.values[0][remnant]
+        if edges.below == "return-only" and lo < kept < first.lo:
+            # stars lighter than the remnant they would leave keep all they have
+            out.insert(0, _outer(edges.below, kept, first.lo, first, ground, -1))
+            out.insert(0, _outer("swallow", lo, kept, first, ground, -1))
+        else:
+            out.insert(0, _outer(edges.below, lo, first.lo, first, ground, -1))
+    if hi > last.hi:
+        out.append(_outer(edges.above, last.hi, hi, last, ground, +1))
+    cut = [(s, max(s.lo, lo), min(s.hi, hi)) for s in out]
+    return [replace(s, lo=a, hi=b, curve=s.curve.between(a, b)) for s, a, b in cut if b > a]
+
+
+def _outer(policy: str, lo: float, hi: float, near: Span, ground: Ground, side: int) -> Span:
+    """An edge, beside the span it lies next to (side -1 below, +1 above)."""
+    end = near.curve.values[0 if side < 0 else -1]
+    share = np.zeros((2, near.curve.share.shape[1]))
+    if policy in ("reach-up", "reach-down"):
+        base = near.lo if side < 0 else near.hi
+        values = np.stack([end * (lo / base), end * (hi / base)])
+        share[:] = np.outer([lo / base, hi / base], near.curve.share[0 if side < 0 else -1])
+    elif policy == "return-only":
+        remnant = end[ground.columns.account("remnant")]
+        values = np.stack([ground.row(lo, remnant), ground.row(hi, remnant)])
+    else:
+        values = np.stack([ground.row(lo, lo), ground.row(hi, hi)])
+    return Span(lo, hi, near.owner, policy, Curve(np.array([lo, hi]), values, None, share))
+
+
+def _events(
+    inner: list[Span],
+    sources: Sequence[StellarSource],
+    tracks: Sequence[Sequence[Track]],
+    order: Sequence[int],
+    ground: Ground,
+    notes: list[str],
+) -> list[Span]:
+    """Mark the spans that die as core-collapse events, and let windows implode."""
+    out = inner
+    for i in order:
+        source = sources[i]
+        if source.kind != "core-collapse":
+            continue
+        lowest = max(
+            source.events_from, max((s.hi for s in out if s.owner != i and s.hi <= _top(out, i)), default=0.0)
+        )
+        out = [p for s in out for p in _split(s, [lowest])]
+        out = [replace(s, collapse=s.owner == i and s.lo >= lowest) for s in out]
+        for a, b in source.implode:
+            out = [p for s in out for p in _split(s, [a, b])]
+            out = [
+                _imploded(s, tracks[i], ground) if s.collapse and a <= s.lo and s.hi <= b else s for s in out
+            ]
+            if not any(s.implodes and a <= s.lo and s.hi <= b for s in out):
+                notes.append(
+                    f"{source.kind}: no star that collapses is born at {a:g}-{b:g} Msun, which should implode"
+                )
+        if source.implode and not any(
+            s.curve.values[:, ground.columns.account("ejected")].any() for s in out if s.implodes
+        ):
+            notes.append(f"{source.kind}: the sets list no winds apart; stars that implode eject nothing")
+    return out
+
+
+def _top(inner: Sequence[Span], owner: int) -> float:
+    return max(s.hi for s in inner if s.owner == owner)
+
+
+def _split(span: Span, masses: Sequence[float]) -> list[Span]:
+    edges = [span.lo, *sorted(m for m in masses if span.lo < m < span.hi), span.hi]
+    if len(edges) == 2:
+        return [span]
+    return [replace(span, lo=a, hi=b, curve=span.curve.between(a, b)) for a, b in pairwise(edges)]
+
+
+def _imploded(span: Span, entries: Sequence[Track], ground: Ground) -> Span:
+    """A span whose stars eject their wind only; outside the sets' own models, nothing."""
+    for entry in entries:
+        if entry.name == span.how:
+            curve = entry.imploded.between(span.lo, span.hi)
+            share = np.zeros((len(curve.mass), span.curve.share.shape[1]))
+            return replace(span, curve=replace(curve, share=share), implodes=True)
+    values = np.stack([ground.row(span.lo, span.lo), ground.row(span.hi, span.hi)])
+    share = np.zeros((2, span.curve.share.shape[1]))
+    return replace(span, curve=Curve(np.array([span.lo, span.hi]), values, None, share), implodes=True)
+
+
+def _check_joins(
+    joins: Sequence[Join],
+    sources: Sequence[StellarSource],
+    tracks: Sequence[Sequence[Track]],
+    order: Sequence[int],
+) -> None:
+    """Refuse a join between names that aren't neighbours."""
+    kinds = [sources[i].kind for i in order]
+    pairs = set(pairwise(kinds))
+    for entries in tracks:
+        names = [t.name for t in entries]
+        pairs |= {(a, b) for a in names for b in names if a != b}
+    for join in joins:
+        if join.between not in pairs:
+            have = "; ".join(f"{a} and {b}" for a, b in sorted(pairs)) or "none"
+            raise InputError(
+                f"join between {' and '.join(join.between)}: these aren't neighbours in this order",
+                mend=f"neighbours are: {have}",
+            )

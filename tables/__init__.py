@@ -1,0 +1,1 @@
+"""Published figures as they ship: one folder a set, named for its paper."""
