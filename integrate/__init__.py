@@ -3,6 +3,7 @@
 from .delays import delay
 from .imf import from_function, imf
 from .lifetimes import lifetimes
+from .plan import Plan
 from .population import Population
 from .results import PopulationYields
 from .sources import DelayedSource, Edges, Join, StellarSource
@@ -11,6 +12,7 @@ __all__ = [
     "DelayedSource",
     "Edges",
     "Join",
+    "Plan",
     "Population",
     "PopulationYields",
     "StellarSource",

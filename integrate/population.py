@@ -23,7 +23,7 @@ from .lifetimes import LifetimeCurve, LifetimeLaw, lifetimes, tabulated
 from .ranges import Ground, Span, spans
 from .results import PopulationYields
 from .sources import REMNANTS, DelayedSource, Edges, Join, Source, StellarSource, interpolation
-from .tracks import Columns, Track, event_row, track
+from .tracks import Columns, Track, braid, event_row, strands
 from .weights import Segments, dead_weights, dying_basis, segments
 
 Array = NDArray[np.float64]
@@ -198,17 +198,19 @@ def _prepare(population: Population) -> Prepared:
     notes: list[str] = []
     tracks: list[list[Track]] = []
     for source in stellar:
-        entries = [
-            track(e, z, names, population.interpolation, population.edges.metallicity, source.winds, solar)
-            for e in source.sets
-        ]
+        entries = []
+        for entry in source.sets:
+            parts, told = strands(
+                entry, z, names, population.interpolation, population.edges.metallicity, source.winds, solar
+            )
+            entries.append(braid(entry.name, parts, names, told))
         tracks.append(entries)
         notes += [n for t in entries for n in t.notes]
     ground = Ground(columns, birth, population.imf.limits)
     cover, more = spans(stellar, tracks, population.joins, population.edges, ground)
     notes += more
     cubic = any(s.curve.slopes is not None for s in cover)
-    limit = next((s.neutron_star_limit for s in stellar if s.kind == "core-collapse"), np.inf)
+    limit = next((s.neutron_star_limit for s in stellar if s.kind == "core-collapse"), None)
     followed = np.zeros((len(population.sources), len(names)), dtype=bool)
     used = {s.how for s in cover}
     rows = []

@@ -268,15 +268,8 @@ def _edges(inner: list[Span], edges: Edges, ground: Ground) -> list[Span]:
     lo, hi = ground.limits
     out = list(inner)
     first, last = inner[0], inner[-1]
-    remnant = ground.columns.account("remnant")
     if lo < first.lo:
-        kept = first.curve.values[0][remnant]
-        if edges.below == "return-only" and lo < kept < first.lo:
-            # stars lighter than the remnant they would leave keep all they have
-            out.insert(0, _outer(edges.below, kept, first.lo, first, ground, -1))
-            out.insert(0, _outer("swallow", lo, kept, first, ground, -1))
-        else:
-            out.insert(0, _outer(edges.below, lo, first.lo, first, ground, -1))
+        out.insert(0, _outer(edges.below, lo, first.lo, first, ground, -1))
     if hi > last.hi:
         out.append(_outer(edges.above, last.hi, hi, last, ground, +1))
     cut = [(s, max(s.lo, lo), min(s.hi, hi)) for s in out]
@@ -284,16 +277,19 @@ def _edges(inner: list[Span], edges: Edges, ground: Ground) -> list[Span]:
 
 
 def _outer(policy: str, lo: float, hi: float, near: Span, ground: Ground, side: int) -> Span:
-    """An edge, beside the span it lies next to (side -1 below, +1 above)."""
+    """An edge, beside the span it lies next to (side -1 below, +1 above).
+
+    Where only birth composition returns, the remnant keeps the end model's share of the initial mass.
+    """
     end = near.curve.values[0 if side < 0 else -1]
+    base = near.lo if side < 0 else near.hi
     share = np.zeros((2, near.curve.share.shape[1]))
     if policy in ("reach-up", "reach-down"):
-        base = near.lo if side < 0 else near.hi
         values = np.stack([end * (lo / base), end * (hi / base)])
         share[:] = np.outer([lo / base, hi / base], near.curve.share[0 if side < 0 else -1])
     elif policy == "return-only":
-        remnant = end[ground.columns.account("remnant")]
-        values = np.stack([ground.row(lo, remnant), ground.row(hi, remnant)])
+        held = end[ground.columns.account("remnant")] / base
+        values = np.stack([ground.row(lo, held * lo), ground.row(hi, held * hi)])
     else:
         values = np.stack([ground.row(lo, lo), ground.row(hi, hi)])
     return Span(lo, hi, near.owner, policy, Curve(np.array([lo, hi]), values, None, share))

@@ -61,8 +61,6 @@ class Track:
         Columns as in `Columns`.
     imploded : Curve
         The same stars when they implode: their wind only, at birth composition.
-    birth : ndarray, shape (species,)
-        Birth mass fractions of the sets' own models at this metallicity.
     models : tuple of (str, float, float)
         Set, metallicity and mass of each published model that the curve's `share` counts.
     followed : ndarray of bool, shape (species,)
@@ -73,13 +71,34 @@ class Track:
     name: str
     curve: Curve
     imploded: Curve
-    birth: Array
     models: tuple[tuple[str, float, float], ...]
     followed: NDArray[np.bool_]
     notes: tuple[str, ...]
 
 
-def track(
+@dataclass(frozen=True, eq=False)
+class Strand:
+    """One slice of one set of an entry: what a track is a weighted sum of.
+
+    Attributes
+    ----------
+    grid : YieldSet
+    position : int
+        Which slice of the set.
+    weight : float
+        Share of the set in the entry times weight of the slice in metallicity.
+    curve, imploded : Curve
+        As in `Track`.
+    """
+
+    grid: YieldSet
+    position: int
+    weight: float
+    curve: Curve
+    imploded: Curve
+
+
+def strands(
     entry: Mixed,
     metallicity: float,
     species: Sequence[str],
@@ -87,8 +106,8 @@ def track(
     edge: str,
     winds: str,
     solar: str,
-) -> Track:
-    """Return what an entry ejects at a metallicity.
+) -> tuple[list[Strand], list[str]]:
+    """Return the slices that an entry is made of at a metallicity.
 
     Parameters
     ----------
@@ -108,15 +127,15 @@ def track(
 
     Returns
     -------
-    Track
+    strands : list of Strand
+    notes : list of str
 
     Raises
     ------
     InputError
-        The set is one of events, or its slices or the mixture's sets share no masses.
+        A set is one of events, or doesn't reach the metallicity and may not be held.
     """
-    curves, imploded, weights, birth, models, notes = [], [], [], [], [], []
-    followed = np.ones(len(species), dtype=bool)
+    out, notes = [], []
     for grid, share in zip(entry.load(solar), entry.shares, strict=True):
         if grid.event:
             raise InputError(
@@ -124,31 +143,57 @@ def track(
                 mend="use it in a source with a delay and a number",
             )
         at = bracket(grid, metallicity, edge)
-        projection, has = grid.projection(species)
-        followed &= has
+        projection, _ = grid.projection(species)
         primary = "net" if "total" in grid.derived else "total"
         for position, weight in zip(at.slices, at.weights, strict=True):
             one = grid.slices[position]
-            curves.append(
-                slice_curve(_without_wind(one) if winds == "rest" else one, projection, method, primary)
+            shown = _without_wind(one) if winds == "rest" else one
+            curve = slice_curve(shown, projection, method, primary)
+            out.append(
+                Strand(grid, position, share * weight, curve, slice_curve(_imploded(one), projection, method))
             )
-            imploded.append(slice_curve(_imploded(one), projection, method))
-            weights.append(share * weight)
-            birth.append(share * weight * (one.initial @ projection))
-            models += [(grid.id, one.metallicity, float(m)) for m in one.mass]
         notes += [n for n in (at.note, *grid.notes) if n]
-        if winds == "rest":
-            notes = [n for n in notes if not n.endswith("returned at birth composition")]
+    if winds == "rest":
+        notes = [n for n in notes if not n.endswith("returned at birth composition")]
+    return out, notes
+
+
+def braid(name: str, parts: Sequence[Strand], species: Sequence[str], notes: Sequence[str] = ()) -> Track:
+    """Combine slices into the track of their entry.
+
+    Parameters
+    ----------
+    name : str
+        Of the entry.
+    parts : sequence of Strand
+    species : sequence of str
+    notes : sequence of str
+
+    Returns
+    -------
+    Track
+
+    Raises
+    ------
+    InputError
+        The slices share no masses.
+    """
+    weights = [p.weight for p in parts]
     try:
-        both = blend(curves, weights)
+        curve = blend([p.curve for p in parts], weights)
     except InputError as error:
+        at = ", ".join(f"{p.grid.slices[p.position].metallicity:g}" for p in parts)
         raise InputError(
-            f"at Z = {metallicity:g}: {error.what}",
-            where=entry.name,
-            mend="choose another metallicity or another set",
+            f"{error.what} at Z = {at}", where=name, mend="choose another metallicity or another set"
         ) from None
+    models = [(p.grid.id, p.grid.slices[p.position]) for p in parts]
     return Track(
-        entry.name, both, blend(imploded, weights), sum(birth), tuple(models), followed, tuple(notes)
+        name,
+        curve,
+        blend([p.imploded for p in parts], weights),
+        tuple((id, one.metallicity, float(m)) for id, one in models for m in one.mass),
+        np.all([p.grid.projection(species)[1] for p in parts], axis=0),
+        tuple(notes),
     )
 
 

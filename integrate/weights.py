@@ -62,7 +62,9 @@ class Segments:
         return np.diff(self.edge)
 
 
-def segments(spans: Sequence[Span], cubic: bool, remnant_column: int, neutron_star_limit: float) -> Segments:
+def segments(
+    spans: Sequence[Span], cubic: bool, remnant_column: int, neutron_star_limit: float | None
+) -> Segments:
     """Turn spans into segments, cut where a remnant becomes a black hole.
 
     Parameters
@@ -73,8 +75,8 @@ def segments(spans: Sequence[Span], cubic: bool, remnant_column: int, neutron_st
         Whether any span has slopes.
     remnant_column : int
         Column that holds the remnant mass.
-    neutron_star_limit : float
-        Heaviest neutron star, Msun.
+    neutron_star_limit : float or None
+        Heaviest neutron star, Msun; None where nobody asks which remnant is which.
 
     Returns
     -------
@@ -83,7 +85,7 @@ def segments(spans: Sequence[Span], cubic: bool, remnant_column: int, neutron_st
     edge, blocks, shares, owner, collapse, implodes, kind = [spans[0].lo], [], [], [], [], [], []
     for span in spans:
         curve = span.curve
-        if span.collapse:
+        if span.collapse and neutron_star_limit is not None:
             curve = _cut_at(curve, remnant_column, neutron_star_limit)
         n = len(curve.mass) - 1
         width = np.diff(curve.mass)[:, None]
@@ -100,7 +102,7 @@ def segments(spans: Sequence[Span], cubic: bool, remnant_column: int, neutron_st
         owner += [span.owner] * n
         collapse += [span.collapse] * n
         implodes += [span.implodes] * n
-        if span.collapse:
+        if span.collapse and neutron_star_limit is not None:
             middle = _middles(curve)[:, remnant_column]
             kind += np.where(middle > neutron_star_limit, 2, 1).tolist()
         else:
