@@ -74,6 +74,8 @@ def build(id: str, info: Mapping[str, Any], printed: Printed, solar: str, checks
     -----
     net = total - X0 * ejected, whichever of the two is printed.
     """
+    if not printed.models or not printed.yields:
+        raise InputError("there are no models", where=id, mend="give a row for each model and its yields")
     for convention, rows in printed.yields.items():
         _same_models(id, convention, printed.models, rows)
     printed_columns = [c for c in next(iter(printed.yields.values()))[0] if c not in MODEL_COLUMNS]
@@ -163,6 +165,13 @@ def _birth(
         if not rows:
             raise InputError(f"no row for metallicity {z:g}", where=where)
         names = {parse(c).name: c for c in rows[0] if c != "metallicity" and c not in _ignored(info)}
+        lacking = [s for s in species if s not in names]
+        if lacking:
+            raise InputError(
+                f"there is no column for {', '.join(lacking)}",
+                where=where,
+                mend="add the mass fraction at birth",
+            )
         return np.array([number(rows[0][names[s]], where) for s in species]), "printed"
     if info["yields"] == "net and total":
         return None, "printed"

@@ -107,12 +107,13 @@ class Mixture:
             raise InputError(
                 f"solar mixture {self.id} has no {one.name}", mend=nearest(one.symbol, self.log_eps)
             )
+        amount = self.at_birth.get(one.symbol, self.log_eps[one.symbol])
         if one.is_element:
-            return self.log_eps[one.symbol]
+            return amount
         if one not in fractions(one.symbol):
             natural = ", ".join(i.name for i in fractions(one.symbol))
             raise InputError(f"{one.name} isn't found in the solar system", mend=f"natural: {natural}")
-        return self.log_eps[one.symbol] + math.log10(fractions(one.symbol)[one])
+        return amount + math.log10(fractions(one.symbol)[one])
 
 
 @lru_cache(maxsize=1)

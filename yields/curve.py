@@ -23,7 +23,8 @@ Method = Literal["linear", "cubic"]
 
 METHODS: tuple[str, ...] = ("linear", "cubic")
 
-#: columns that follow the species' totals and net yields in every block of values
+#: columns that follow the species' totals and net yields in every block of values; rest is what
+#: belongs to none of those species
 ACCOUNTS = ("rest_total", "rest_net", "ejected", "remnant", "wind")
 
 
@@ -126,7 +127,11 @@ def blend(curves: Sequence[Curve], weights: Sequence[float]) -> Curve:
 
 
 def slice_curve(
-    one: Slice, projection: Array, method: Method = "linear", primary: Convention = "total"
+    one: Slice,
+    projection: Array,
+    method: Method = "linear",
+    primary: Convention = "total",
+    winds: Literal["birth", "rest"] = "birth",
 ) -> Curve:
     """Return the curve of one slice, in the block layout [totals, net yields, accounts].
 
@@ -138,40 +143,74 @@ def slice_curve(
     method : {"linear", "cubic"}
         Straight lines between models, or monotone cubics (Fritsch & Butland 1984,
         SIAM J. Sci. Stat. Comput. 5, 300, as in scipy's PCHIP). With cubics the
-        primary yields, species by species, and the remnant are interpolated and
-        all others follow from them, so that budgets still close.
+        primary yields, species by species, the remnant and the wind are interpolated
+        and all others follow from them, so that budgets still close.
     primary : {"total", "net"}
         Which yields the cubics run through without overshoot: those published.
+    winds : {"birth", "rest"}
+        Whether totals hold the wind that the paper doesn't list, at birth composition.
 
     Returns
     -------
     Curve
         Values of shape (n, 2 o + 5).
     """
-    if method not in METHODS:
-        raise InputError(f"interpolation {method!r} isn't known", mend=f"choose one of {', '.join(METHODS)}")
-    values = _block(one.total, one.net, one.ejected, one.remnant, one.wind, one.mass, projection)
+    _known(method)
+    total = one.total if winds == "birth" else one.listed
+    values = _block(total, one.net, one.ejected, one.remnant, one.wind, one.mass, projection)
     slopes = None
     if method == "cubic" and len(one.mass) > 1:
-        from scipy.interpolate import PchipInterpolator
-
-        def derivative(y: Array) -> Array:
-            return PchipInterpolator(one.mass, y, axis=0)(one.mass, 1)
-
-        remnant, wind = derivative(one.remnant), derivative(one.wind)
+        remnant, wind = _slopes(one.mass, one.remnant), _slopes(one.mass, one.wind)
         ejected = 1.0 - remnant
-        birth = ejected[:, None] * one.initial
-        total = derivative(one.total) if primary == "total" else derivative(one.net) + birth
-        net = total - birth
+        processed = (ejected - wind)[:, None] * one.initial
+        if primary == "total":
+            listed = _slopes(one.mass, one.listed)
+            net = listed - processed
+        else:
+            net = _slopes(one.mass, one.net)
+            listed = net + processed
+        total = listed + wind[:, None] * one.initial if winds == "birth" else listed
         slopes = _block(total, net, ejected, remnant, wind, np.ones_like(one.mass), projection)
     return Curve(one.mass, values, slopes, np.eye(len(one.mass)))
+
+
+def imploded_curve(
+    one: Slice, projection: Array, method: Method = "linear", winds: Literal["birth", "rest"] = "birth"
+) -> Curve:
+    """Return the curve of a slice whose stars eject nothing but the wind that the paper doesn't list.
+
+    Parameters and result as in `slice_curve`.
+    """
+    _known(method)
+
+    def block(wind: Array, mass: Array) -> Array:
+        lost = wind[:, None] * one.initial * (winds == "birth")
+        return _block(lost, np.zeros_like(lost), wind, mass - wind, wind, mass, projection)
+
+    slopes = None
+    if method == "cubic" and len(one.mass) > 1:
+        slopes = block(_slopes(one.mass, one.wind), np.ones_like(one.mass))
+    return Curve(one.mass, block(one.wind, one.mass), slopes, np.eye(len(one.mass)))
+
+
+def _known(method: str) -> None:
+    if method not in METHODS:
+        raise InputError(f"interpolation {method!r} isn't known", mend=f"choose one of {', '.join(METHODS)}")
+
+
+def _slopes(mass: Array, values: Array) -> Array:
+    """Derivatives of the monotone cubics at their nodes."""
+    from scipy.interpolate import PchipInterpolator
+
+    return PchipInterpolator(mass, values, axis=0)(mass, 1)
 
 
 def _block(
     total: Array, net: Array, ejected: Array, remnant: Array, wind: Array, mass: Array, projection: Array
 ) -> Array:
-    rest_total = mass - remnant - total.sum(axis=1)
-    accounts = np.column_stack([rest_total, -net.sum(axis=1), ejected, remnant, wind])
+    wanted = projection.any(axis=1)
+    rest_total = mass - remnant - total[:, wanted].sum(axis=1)
+    accounts = np.column_stack([rest_total, -net[:, wanted].sum(axis=1), ejected, remnant, wind])
     return np.hstack([total @ projection, net @ projection, accounts])
 
 

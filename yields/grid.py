@@ -17,11 +17,13 @@ from .nuclides import Species, parse
 if TYPE_CHECKING:
     import pandas as pd
 
+    from .audit import Finding
+
 Array = NDArray[np.float64]
 Convention = Literal["total", "net"]
 
 
-@dataclass(frozen=True, eq=False)
+@dataclass(frozen=True, eq=False, repr=False)
 class Slice:
     """All models of a yield set at one metallicity.
 
@@ -62,9 +64,10 @@ class Slice:
             ("wind", (n,)),
             ("net", (n, s)),
             ("initial", (s,)),
+            ("lifetime", (n,)),
         ):
             array = getattr(self, name)
-            if array.shape != shape:
+            if array is not None and array.shape != shape:
                 raise InputError(f"{name} has shape {array.shape}, not {shape}", where=self._where())
         for name in ("mass", "ejected", "wind", "total", "net", "initial"):
             array = getattr(self, name)
@@ -91,8 +94,14 @@ class Slice:
                 where=self._where(),
                 mend="sort the models and keep one for each mass",
             )
-        for array in (self.mass, self.ejected, self.wind, self.total, self.net, self.initial):
-            array.setflags(write=False)
+        for name in ("mass", "ejected", "wind", "total", "net", "initial"):
+            own = np.array(getattr(self, name), dtype=float)
+            own.setflags(write=False)
+            object.__setattr__(self, name, own)
+
+    def __repr__(self) -> str:
+        lo, hi = self.mass[0], self.mass[-1]
+        return f"Slice(Z = {self.metallicity:g}, {len(self.mass)} models, {lo:g}-{hi:g} Msun)"
 
     def _where(self) -> str:
         return f"slice Z = {self.metallicity:g}"
@@ -177,6 +186,17 @@ class YieldSet:
         if len(set(self.species)) != len(self.species):
             twice = sorted({s for s in self.species if self.species.count(s) > 1})
             raise InputError(f"species named twice: {', '.join(twice)}", where=self.id)
+        for name in self.species:
+            if parse(name).name != name:
+                raise InputError(f"species {name!r} isn't written as {parse(name).name}", where=self.id)
+        whole = {s.symbol for s in self.parsed if s.is_element}
+        both = sorted({s.symbol for s in self.parsed if not s.is_element and s.symbol in whole})
+        if both:
+            raise InputError(
+                f"both an element and its nuclides are listed: {', '.join(both)}",
+                where=self.id,
+                mend="keep one of them, or the element would count twice",
+            )
         for one in self.slices:
             if one.total.shape[1] != len(self.species):
                 raise InputError(
@@ -309,6 +329,24 @@ class YieldSet:
                 f"no model of {mass:g} Msun at Z = {metallicity:g}", where=self.id, mend=f"it has {have}"
             )
         return float(getattr(one, convention)[rows[0], columns].sum())
+
+    def audit(self) -> tuple[Finding, ...]:
+        """Look for what contradicts itself in the set: `steelyard.yields.audit.audit`.
+
+        Returns
+        -------
+        tuple of Finding
+            The heaviest first.
+
+        Examples
+        --------
+        >>> from steelyard.yields import load
+        >>> load("kobayashi-2006").audit()[0].severity
+        'warning'
+        """
+        from .audit import audit
+
+        return audit(self)
 
     def to_pandas(self, convention: Convention = "total") -> pd.DataFrame:
         """Return the whole set as a table.

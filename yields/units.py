@@ -20,6 +20,7 @@ if TYPE_CHECKING:
 MSUN_KG = 1.988409870698051e30
 
 # pint evaluates expressions; only "number unit", units joined by * and / and with one-digit powers, reach it
+_LONGEST = 80
 _UNIT = r"[A-Za-z_]{1,24}(\s*(\^|\*\*)\s*[-+]?\d)?"
 _QUANTITY = re.compile(
     r"\s*[-+]?(\d+\.?\d*|\.\d+)([eE][-+]?\d{1,3})?\s*([*/]?\s*"
@@ -88,22 +89,33 @@ def plain(value: Any, unit: str, name: str, *, where: str = "") -> Any:
     if isinstance(value, str):
         value = _read(value, unit, name, where, hint)
     elif hasattr(value, "dimensionality") and hasattr(value, "magnitude"):
-        value = registry().Quantity(np.asarray(value.magnitude, dtype=float), str(value.units))
+        magnitude, its_unit = np.asarray(value.magnitude, dtype=float), str(value.units)
+        try:
+            value = registry().Quantity(magnitude, its_unit)
+        except Exception:  # as in _read
+            raise InputError(
+                f"{name} has a unit that isn't known: {its_unit!r}", where=where, mend=hint
+            ) from None
         value = _convert(value, unit, name, where, hint)
+    elif hasattr(value, "to_value") and hasattr(value, "unit"):
+        value = _from_astropy(value, unit, name, where, hint)
     elif isinstance(value, (list, tuple)) and any(
-        isinstance(v, str) or hasattr(v, "dimensionality") for v in value
+        isinstance(v, str) or hasattr(v, "dimensionality") or hasattr(v, "to_value") for v in value
     ):
         value = np.array([plain(v, unit, name, where=where) for v in value])
     try:
         array = np.asarray(value, dtype=float)
-    except (TypeError, ValueError):
-        raise InputError(f"{name} is not a number: {value!r}", where=where, mend=hint) from None
+    except (TypeError, ValueError, OverflowError):
+        raise InputError(f"{name} is not a number: {str(value)[:60]}", where=where, mend=hint) from None
     if not np.all(np.isfinite(array)):
-        raise InputError(f"{name} holds a value that isn't finite: {value!r}", where=where, mend=hint)
+        shown = str(value)[:60]
+        raise InputError(f"{name} holds a value that isn't finite: {shown}", where=where, mend=hint)
     return float(array) if array.ndim == 0 else array
 
 
 def _read(text: str, unit: str, name: str, where: str, hint: str) -> float:
+    if len(text) > _LONGEST:
+        raise InputError(f"{name} is not a quantity: {text[:40]!r} ...", where=where, mend=hint)
     try:
         return float(text)
     except ValueError:
@@ -125,6 +137,17 @@ def _convert(quantity: pint.Quantity, unit: str, name: str, where: str, hint: st
     except pint.DimensionalityError:
         raise InputError(
             f"{name} has the wrong dimension: {quantity:~} is not a quantity of {unit or 'pure number'}",
+            where=where,
+            mend=hint,
+        ) from None
+
+
+def _from_astropy(value: Any, unit: str, name: str, where: str, hint: str) -> Any:
+    try:
+        return value.to_value(unit.replace("Msun", "solMass"))
+    except Exception:  # astropy's UnitConversionError, which only exists where astropy is loaded
+        raise InputError(
+            f"{name} has the wrong dimension: {value.unit} is not a unit of {unit or 'pure number'}",
             where=where,
             mend=hint,
         ) from None
