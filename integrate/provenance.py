@@ -1,0 +1,163 @@
+"""Where a result comes from, told beside its figures; and files that are written whole or not at all."""
+
+from __future__ import annotations
+
+import os
+import secrets
+import stat
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+from steelyard.yields.errors import InputError
+
+from .results import PopulationYields
+from .sources import StellarSource
+
+if TYPE_CHECKING:
+    from .population import Population
+
+#: what a result is called in the files that hold one
+FORMAT = "steelyard population yields"
+
+
+def provenance(result: PopulationYields) -> list[str]:
+    """Return where a result comes from, as lines of text.
+
+    Parameters
+    ----------
+    result : PopulationYields
+
+    Returns
+    -------
+    list of str
+        Version, units, the population in one line and as its file, sets with their
+        checksums, policies, notes.
+    """
+    told = attributes(result)
+    sets = [f"set {id} sha256 {sha}" for id, sha in zip(told["sets"], told["set_checksums"], strict=True)]
+    return [
+        f"{FORMAT}, steelyard {told['steelyard_version']}",
+        summary(result.population),
+        "total, net: Msun per Msun formed up to the age; rates: Msun per yr and Msun formed",
+        "followed 0: the source doesn't follow the species; missing, not zero",
+        *sets,
+        *(f"policy {line}" for line in told["policies"]),
+        *(f"note {line}" for line in told["notes"]),
+        "population file:",
+        *(f"    {line}" for line in told["population"].splitlines()),
+    ]
+
+
+def summary(population: Population) -> str:
+    """Return a population in one line.
+
+    Examples
+    --------
+    >>> from steelyard.integrate import Population, StellarSource
+    >>> summary(Population(0.02, [StellarSource("agb", ["karakas-2010"])]))
+    'Z = 0.02; kroupa-2001 0.08-120 Msun; agb: karakas-2010'
+    """
+    mass_function = population.imf
+    lo, hi = mass_function.limits
+    form = mass_function.to_dict().get("form", "function")
+    parts = [f"Z = {population.metallicity:g}", f"{form} {lo:g}-{hi:g} Msun"]
+    for source in population.sources:
+        sets = ", ".join(entry.name for entry in source.sets)
+        number = "" if isinstance(source, StellarSource) else f", {source.number:g} per Msun"
+        parts.append(f"{source.kind}: {sets}{number}")
+    return "; ".join(parts)
+
+
+def policies(result: PopulationYields) -> tuple[str, ...]:
+    """Return the policies in force, a line each: what serves each range of mass, and the rest."""
+    population = result.population
+    laws = (
+        population.lifetimes
+        if isinstance(population.lifetimes, str)
+        else result.population.prepared.curve.law
+    )
+    lines = [
+        f"{one['from']:g}-{one['to']:g} Msun: {one['served_by']}, counted for {one['source']}"
+        for one in result.ranges
+    ]
+    lines += [
+        f"between models: {population.interpolation} in initial mass",
+        f"beyond the metallicities of a set: {population.edges.metallicity}",
+        f"lifetimes: {laws}",
+        f"solar mixture: {population.solar}",
+    ]
+    for source in population.sources:
+        if isinstance(source, StellarSource):
+            lines.append(f"winds that a set of {source.kind} doesn't list: {source.winds}")
+    return tuple(lines)
+
+
+def attributes(result: PopulationYields) -> dict[str, Any]:
+    """Return where a result comes from, by name.
+
+    Parameters
+    ----------
+    result : PopulationYields
+
+    Returns
+    -------
+    dict
+        ``format``, ``steelyard_version``, ``summary``, ``population`` (its file, TOML): text;
+        ``sets``, ``set_checksums`` (one each), ``policies``, ``notes``: tuples of text.
+    """
+    from importlib.metadata import version
+
+    from .popfile import population_to_toml
+
+    sets = result.population.prepared.sets
+    return {
+        "format": FORMAT,
+        "steelyard_version": version("steelyard"),
+        "summary": summary(result.population),
+        "population": population_to_toml(result.population),
+        "sets": tuple(one.id for one in sets),
+        "set_checksums": tuple(one.checksum for one in sets),
+        "policies": policies(result),
+        "notes": tuple(result.notes),
+    }
+
+
+def replace_file(path: str | Path, data: bytes) -> None:
+    """Write a file whole, or leave what is there as it is.
+
+    Parameters
+    ----------
+    path : str or Path
+    data : bytes
+
+    Raises
+    ------
+    InputError
+        There is no such folder, it may not be written to, or the disk is full.
+    """
+    try:
+        # through a link to what it points at, so that the link stays
+        target = Path(os.path.realpath(path))
+        beside = target.with_name(f".{target.name[:100]}.{secrets.token_hex(6)}.part")
+        if target.exists() and not stat.S_ISREG(target.stat().st_mode):
+            raise InputError("can't be written: not an ordinary file", where=str(path), mend="name a file")
+        try:
+            with beside.open("xb") as file:
+                file.write(data)
+                file.flush()
+                os.fsync(file.fileno())
+            if target.exists():
+                beside.chmod(stat.S_IMODE(target.stat().st_mode))
+            os.replace(beside, target)
+        except BaseException:
+            beside.unlink(missing_ok=True)
+            raise
+    except InputError:
+        raise
+    except FileNotFoundError:
+        raise InputError(
+            f"there is no folder {target.parent}", where=str(path), mend="make it first"
+        ) from None
+    except (OSError, ValueError) as error:
+        reason = getattr(error, "strerror", None) or str(error)
+        raise InputError(f"can't be written: {reason}", where=str(path), mend="name another place") from None
