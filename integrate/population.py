@@ -18,20 +18,22 @@ from steelyard.yields.library import DEFAULT_SOLAR
 from steelyard.yields.nuclides import parse
 from steelyard.yields.units import plain
 
-from .imf import MassFunction, imf, kroupa_2001
+from .imf import CallableIMF, MassFunction, imf, kroupa_2001
+from .laws import law_of, named, with_law
 from .lifetimes import LifetimeCurve, LifetimeLaw, lifetimes, tabulated
 from .ranges import Ground, Span, spans
 from .results import PopulationYields
-from .sources import REMNANTS, DelayedSource, Edges, Join, Source, StellarSource, interpolation
+from .sources import STELLAR_KINDS, DelayedSource, Edges, Join, Source, StellarSource, interpolation
 from .tracks import Columns, Track, braid, event_row, strands
-from .weights import Segments, dead_weights, dying_basis, segments
+from .weighing import Products, weigh
+from .weights import Segments, segments
 
 Array = NDArray[np.float64]
 
 DEFAULT_AGES = (1e7, 3e7, 1e8, 3e8, 1e9, 3e9, 13.8e9)
 
 
-@dataclass(frozen=True, eq=False)
+@dataclass(frozen=True, eq=False, repr=False)
 class Population:
     """Stars born together, and the events that follow from them.
 
@@ -40,8 +42,9 @@ class Population:
     metallicity : float
         Mass fraction of metals at birth.
     sources : sequence of StellarSource or DelayedSource
-    imf : MassFunction or str
-        A mass function, or the name of one with its usual limits.
+    imf : MassFunction, str or callable
+        A mass function, the name of one with its usual limits, or a function of
+        metallicity that returns one, such as a `PowerLawIMF`.
     lifetimes : str, callable or LifetimeLaw
         A law by name; ``"sets"`` for the sets' own lifetimes where they give them
         (Portinari+ 1998 elsewhere); or a function of mass and metallicity in yr.
@@ -88,9 +91,14 @@ class Population:
         if not 0 <= z < 0.5:
             raise InputError(f"metallicity {z:g} isn't a mass fraction of metals", mend="such as 0.014")
         put(self, "metallicity", z)
-        put(self, "sources", tuple(self.sources))
+        put(self, "sources", tuple(s.at(z) for s in self.sources))
         put(self, "joins", tuple(self.joins))
-        put(self, "imf", imf(self.imf) if isinstance(self.imf, str) else self.imf)
+        put(self, "imf", _mass_function(self.imf, z))
+        if not isinstance(self.imf, MassFunction):
+            raise InputError(
+                f"imf isn't a mass function: {str(self.imf)[:60]}",
+                mend="give a form's name, steelyard.integrate.imf(...) or from_function(function, limits)",
+            )
         put(self, "ages", read_ages(self.ages))
         interpolation(self.interpolation)
         mixture(self.solar)
@@ -105,6 +113,9 @@ class Population:
                 f"source {twice[0]} is named twice",
                 mend="put its sets in series or in a mixture in one source",
             )
+
+    def __repr__(self) -> str:
+        return f"Population(Z = {self.metallicity:g}, {self.imf!r}, sources {', '.join(self.kinds)})"
 
     @property
     def kinds(self) -> tuple[str, ...]:
@@ -134,7 +145,29 @@ class Population:
         InputError
             Negative ages, or sets that don't fit together.
         """
-        return _weigh(self, self.ages if ages is None else read_ages(ages))
+        return weigh(self, self.ages if ages is None else read_ages(ages))
+
+
+def _mass_function(given: Any, metallicity: float) -> MassFunction:
+    """The mass function at a metallicity, with the law it comes from if there is one."""
+    if isinstance(given, str):
+        return imf(given)
+    law = law_of(given) if isinstance(given, MassFunction) else given
+    if law is None:
+        return given
+    if not callable(law):
+        raise InputError(
+            f"imf can't be read from {given!r}",
+            mend="give a mass function, its name, or a function of metallicity that returns one",
+        )
+    made = law(metallicity)
+    if not isinstance(made, MassFunction):
+        raise InputError(
+            f"{named(law)} doesn't return a mass function at Z = {metallicity:g}",
+            where="imf",
+            mend="return what steelyard.integrate.imf or from_function makes",
+        )
+    return with_law(made, law)
 
 
 def read_ages(ages: Any) -> tuple[float, ...]:
@@ -182,6 +215,11 @@ class Prepared:
     curve: LifetimeCurve
     notes: tuple[str, ...]
 
+    @cached_property
+    def products(self) -> Products:
+        """The segments' coefficients laid out for products with the weights."""
+        return Products(self.segments)
+
 
 def _prepare(population: Population) -> Prepared:
     z, solar = population.metallicity, population.solar
@@ -203,6 +241,11 @@ def _prepare(population: Population) -> Prepared:
             parts, told = strands(
                 entry, z, names, population.interpolation, population.edges.metallicity, source.winds, solar
             )
+            told += [
+                f"{source.kind}: {g.id} is a set of kind {g.kind}"
+                for g in entry.load(solar)
+                if g.kind in STELLAR_KINDS and g.kind != source.kind
+            ]
             entries.append(braid(entry.name, parts, names, told))
         tracks.append(entries)
         notes += [n for t in entries for n in t.notes]
@@ -223,6 +266,11 @@ def _prepare(population: Population) -> Prepared:
             rows.append(sum(w * row for w, (row, _) in zip(source.sets[0].shares, parts, strict=True)))
             followed[i] = np.all([f for _, f in parts], axis=0)
     curve = _lifetime_curve(population, stellar, notes)
+    if isinstance(population.imf, CallableIMF):
+        notes.append(
+            "the mass function is a function, integrated numerically: relative error of its integrals about"
+            f" {max(population.imf.error, 1e-16):.0e}"
+        )
     return Prepared(
         columns,
         birth,
@@ -286,85 +334,4 @@ def _lifetime_curve(
     raise InputError(
         'no set of the population gives lifetimes, as lifetimes = "sets" asks',
         mend='choose a law, such as "portinari-1998"',
-    )
-
-
-def _weigh(population: Population, ages: Sequence[float]) -> PopulationYields:
-    ready = population.prepared
-    mass_function: MassFunction = population.imf
-    asked = np.array(ages)
-    order = np.argsort(asked, kind="stable")
-    back = np.argsort(order, kind="stable")
-    age = asked[order]
-    parts, columns = ready.segments, ready.columns
-    lo, hi = mass_function.limits
-    turnoff = np.asarray(ready.curve.turnoff(age))
-
-    weights = dead_weights(mass_function, parts, turnoff)
-    which, dying = dying_basis(parts, np.clip(turnoff, lo, hi))
-    alive = (turnoff > lo) & (turnoff <= hi)
-    deaths = np.where(
-        alive, mass_function(np.clip(turnoff, lo, hi)) * abs(ready.curve.turnoff_slope(age)), 0.0
-    )
-    dying_rows = deaths[:, None] * np.einsum("te,teq->tq", dying, parts.coefficients[which])
-
-    count, width = len(age), columns.width
-    cumulative = np.zeros((len(population.sources), count, width))
-    rate = np.zeros_like(cumulative)
-    events: dict[str, Array] = {}
-    event_rates: dict[str, Array] = {}
-    stars = weights[..., :2].sum(axis=-1)
-    remnant_column = columns.account("remnant")
-    remnants = {
-        name: np.einsum(
-            "tse,se->t",
-            weights[:, parts.remnant == k],
-            parts.coefficients[parts.remnant == k][..., remnant_column],
-        )
-        for k, name in enumerate(REMNANTS)
-    }
-    stellar = late = 0
-    for i, source in enumerate(population.sources):
-        if isinstance(source, StellarSource):
-            mine = parts.owner == stellar
-            flat = parts.coefficients[mine].reshape(-1, width)
-            cumulative[i] = weights[:, mine].reshape(count, -1) @ flat
-            rate[i] = np.where((parts.owner[which] == stellar)[:, None], dying_rows, 0.0)
-            if source.kind == "core-collapse":
-                events[source.kind] = stars[:, parts.collapse].sum(axis=1)
-                event_rates[source.kind] = np.where(parts.collapse[which], deaths, 0.0)
-                if source.implode:
-                    events["imploded"] = stars[:, parts.implodes].sum(axis=1)
-                    event_rates["imploded"] = np.where(parts.implodes[which], deaths, 0.0)
-            stellar += 1
-        else:
-            number = source.number * np.asarray(source.delay.fraction(age))
-            speed = source.number * np.asarray(source.delay.density(age))
-            events[source.kind], event_rates[source.kind] = number, speed
-            cumulative[i] = number[:, None] * ready.events[late]
-            rate[i] = speed[:, None] * ready.events[late]
-            remnants[source.consumes] = (
-                remnants[source.consumes] - number * ready.events[late, columns.account("ejected")]
-            )
-            late += 1
-    living = mass_function.mass(lo, np.clip(turnoff, lo, hi))
-    notes = [*ready.notes, *ready.curve.notes_at(age, (lo, hi))]
-    notes += [
-        f"delayed events use up more {name} mass than there is at some ages"
-        for name, value in remnants.items()
-        if value.min() < -1e-12
-    ]
-    return PopulationYields(
-        population=population,
-        ages=asked,
-        species=columns.species,
-        sources=population.kinds,
-        cumulative=cumulative[:, back],
-        rates=rate[:, back],
-        living=living[back],
-        remnants_by_kind={k: v[back] for k, v in remnants.items()},
-        events={k: v[back] for k, v in events.items()},
-        event_rates={k: v[back] for k, v in event_rates.items()},
-        followed=ready.followed,
-        notes=tuple(dict.fromkeys(notes)),
     )
