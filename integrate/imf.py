@@ -216,7 +216,8 @@ def from_function(
     True
     """
     lo, hi = _limits(limits, (0.08, 120.0))
-    inner = sorted(float(b) for b in breaks if lo < b < hi)
+    given = np.atleast_1d(plain(breaks, "Msun", "breaks")).tolist() if len(breaks) else []
+    inner = sorted(b for b in given if lo < b < hi)
     edges = np.array([lo, *inner, hi])
     zero, one = np.zeros(len(edges) - 1), np.ones(len(edges) - 1)
     fine = gauss(function, edges[:-1], edges[1:], zero, one, 1, 32)

@@ -14,7 +14,7 @@ from collections.abc import Callable
 from dataclasses import dataclass
 from functools import lru_cache
 from importlib.resources import files
-from typing import Any
+from typing import Any, ClassVar
 
 import numpy as np
 
@@ -61,6 +61,34 @@ class LifetimeLaw(ABC):
         InputError
             A metallicity outside 0 to 1.
         """
+
+    def metallicity_slope(self, mass: Any, metallicity: Any) -> np.ndarray:
+        """Return how the logarithm of a lifetime moves with metallicity, towards higher ones at a kink.
+
+        The laws by name have closed forms. For a function it is a five-point difference over
+        0.2 % of the metallicity to either side (at 0, upwards from it over 4e-6).
+
+        Parameters
+        ----------
+        mass : float or array_like
+            Initial mass, Msun.
+        metallicity : float
+            Mass fraction of metals at birth.
+
+        Returns
+        -------
+        numpy.ndarray
+            d ln t / dZ, in the shape of `mass`.
+
+        Examples
+        --------
+        >>> Portinari1998().metallicity_slope([1.0, 20.0], 0.01).round(2)
+        array([ 21.48, -10.78])
+        """
+        z = _metallicity(metallicity)
+        h = 1e-3 * z if z > 0 else 1e-6
+        shares = {-2: 1, -1: -8, 1: 8, 2: -1} if z > 0 else {0: -25, 1: 48, 2: -36, 3: 16, 4: -3}
+        return sum(w * np.log(self.at(z + k * h).lifetime(mass)) for k, w in shares.items()) / (12 * h)
 
 
 def _metallicity(value: Any) -> float:
@@ -113,6 +141,15 @@ class Portinari1998(LifetimeLaw):
             masses=tuple(masses.tolist()),
             lifetimes=tuple(times.tolist()),
         )
+
+    def metallicity_slope(self, mass: Any, metallicity: Any) -> np.ndarray:
+        """Return d ln t / dZ; see `LifetimeLaw.metallicity_slope`."""
+        z, columns = _metallicity(metallicity), _portinari()[0]
+        if not columns[0] <= z < columns[-1]:
+            return np.zeros(np.shape(mass))
+        k = int(np.searchsorted(columns, z, side="right")) - 1
+        low, high = (np.log(self.at(c).lifetime(mass)) for c in columns[k : k + 2].tolist())
+        return (high - low) / np.log(columns[k + 1] / columns[k]) / z
 
 
 @lru_cache(maxsize=1)
@@ -194,16 +231,19 @@ class Raiteri1996(LifetimeLaw):
     2.0417
     """
 
+    _COVERED: ClassVar[tuple[float, float]] = (7e-5, 0.03)
+    _FIT: ClassVar[tuple[tuple[float, float, float], ...]] = (
+        (10.13, 0.07547, -0.008084),
+        (-4.424, -0.7939, -0.1187),
+        (1.262, 0.3385, 0.05417),
+    )
+
     def at(self, metallicity: Any) -> ParabolaCurve:
         """Return the curve at one metallicity; see `LifetimeLaw.at`."""
         asked = _metallicity(metallicity)
-        z, notes = _hold("raiteri-1996", asked, 7e-5, 0.03)
+        z, notes = _hold("raiteri-1996", asked, *self._COVERED)
         x = np.log10(z)
-        coefficients = (
-            10.13 + 0.07547 * x - 0.008084 * x**2,
-            -4.424 - 0.7939 * x - 0.1187 * x**2,
-            1.262 + 0.3385 * x + 0.05417 * x**2,
-        )
+        coefficients = tuple(a + b * x + c * x**2 for a, b, c in self._FIT)
         return ParabolaCurve(
             law="raiteri-1996",
             metallicity=asked,
@@ -211,6 +251,16 @@ class Raiteri1996(LifetimeLaw):
             notes=notes,
             coefficients=tuple(float(a) for a in coefficients),
         )
+
+    def metallicity_slope(self, mass: Any, metallicity: Any) -> np.ndarray:
+        """Return d ln t / dZ; see `LifetimeLaw.metallicity_slope`."""
+        z = _metallicity(metallicity)
+        if not self._COVERED[0] <= z < self._COVERED[1]:
+            return np.zeros(np.shape(mass))
+        x = np.log10(z)
+        # from the mass of least lifetime on, log10 m stays, and the parabola is level there
+        at = np.log10(np.minimum(mass, self.at(z).mass_of_least))
+        return sum((b + 2 * c * x) * at**n for n, (_, b, c) in enumerate(self._FIT)) / z
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -279,6 +329,10 @@ class PadovaniMatteucci1993(LifetimeLaw):
         return TwoBranchCurve(
             law="padovani-matteucci-1993", metallicity=_metallicity(metallicity), valid=(0.6, 120.0)
         )
+
+    def metallicity_slope(self, mass: Any, metallicity: Any) -> np.ndarray:
+        """Return d ln t / dZ, which is 0; see `LifetimeLaw.metallicity_slope`."""
+        return np.zeros(np.shape(mass))
 
 
 @dataclass(frozen=True, kw_only=True)

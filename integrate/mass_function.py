@@ -13,6 +13,7 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from steelyard.yields.errors import InputError
+from steelyard.yields.units import plain
 
 from .moments import Piece
 
@@ -50,6 +51,10 @@ class MassFunction(Protocol):
 class _Integrals:
     """Counts and masses between any two masses, from the moments of whole pieces."""
 
+    def __repr__(self) -> str:
+        lo, hi = self.limits
+        return f"{type(self).__name__}({self.form!r}, {lo:g}-{hi:g} Msun)"
+
     def _between(self, lo: ArrayLike, hi: ArrayLike, power: int) -> Array:
         lo, hi = np.broadcast_arrays(np.asarray(lo, dtype=float), np.asarray(hi, dtype=float))
         edges = np.array([self.limits[0], *self.breaks, self.limits[1]])
@@ -82,7 +87,7 @@ class _Integrals:
         >>> float(imf("salpeter-1955", limits=(0.1, 100)).number(8, 40).round(7))
         0.0068015
         """
-        return self._between(lo, hi, 0)
+        return self._between(plain(lo, "Msun", "mass"), plain(hi, "Msun", "mass"), 0)
 
     def mass(self, lo: ArrayLike, hi: ArrayLike) -> Array:
         """Return the mass born in stars between two masses, per Msun formed.
@@ -97,10 +102,10 @@ class _Integrals:
         ndarray
             Broadcast shape of `lo` and `hi`.
         """
-        return self._between(lo, hi, 1)
+        return self._between(plain(lo, "Msun", "mass"), plain(hi, "Msun", "mass"), 1)
 
 
-@dataclass(frozen=True, eq=False)
+@dataclass(frozen=True, eq=False, repr=False)
 class AnalyticIMF(_Integrals):
     """A mass function of power-law and lognormal pieces, integrated in closed form.
 
@@ -176,7 +181,7 @@ class AnalyticIMF(_Integrals):
         return {"form": self.form, **self.parameters, "limits": list(self.limits)}
 
 
-@dataclass(frozen=True, eq=False)
+@dataclass(frozen=True, eq=False, repr=False)
 class CallableIMF(_Integrals):
     """A mass function given as a function, integrated by Gauss-Legendre on the same pieces.
 

@@ -27,8 +27,9 @@ from scipy.special import erf, erfc, exprel
 
 Array = NDArray[np.float64]
 
-#: half-widths (b - a) / (b + a), times 1 + effective slope, up to which the series is used
-_NARROW = 1.05
+#: half-widths (b - a) / (b + a), times 1 + local slope, up to which the series is used: beyond, its
+#: terms would grow before they fall
+_NARROW = 4.0
 
 #: and the half-width itself: the series' terms fall at least as this to the n-th power
 _WIDEST = 0.34
@@ -107,20 +108,30 @@ class Piece:
     def _series(self, a: Array, b: Array, c: Array, h: Array, order: int) -> Array:
         middle = 0.5 * (a + b)
         delta = (b - a) / (b + a)
-        terms = _terms(float(delta.max(initial=0.0)), self.slope, self.curvature > 0)
         d2 = delta * delta
+        steepest = abs(self.slope)
         if self.curvature:
             local = self.slope + self.curvature * (np.log(middle) - self.centre)
+            steepest = float(abs(local).max(initial=0.0)) + self.curvature**0.5
+        terms = _terms(float(delta.max(initial=0.0)), steepest, self.curvature > 0)
+        if self.curvature:
             taylor = _lognormal_taylor(local, self.curvature, terms)
         else:
             taylor = _power_taylor(self.slope, terms)
         # int_-1^1 v^j phi(middle (1 + delta v)) / phi(middle) dv: only even powers of v survive
+        half = terms // 2
+        powers = np.ones((half, len(delta)))
+        powers[1:] = d2
+        np.multiply.accumulate(powers, axis=0, out=powers)
+        even = 2.0 * np.arange(half)
         spread = []
         for j in range(order + 1):
             first = j % 2
-            total = np.zeros_like(delta)
-            for n in range(terms - 1 - (terms - 1 - first) % 2, -1, -2):
-                total = total * d2 + taylor[n] * (2.0 / (n + j + 1))
+            factors = 2.0 / (even + first + j + 1)
+            if self.curvature:
+                total = np.einsum("n,np,np->p", factors, np.array(taylor[first::2]), powers)
+            else:
+                total = (factors * np.array(taylor[first::2])) @ powers
             spread.append(total * delta if first else total)
         scale = self(middle) * 0.5 * (b - a)
         # (a - c) and (b - c) are exact where the middle itself is rounded

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import cached_property
 from typing import TYPE_CHECKING, Any, Literal
 
 import numpy as np
@@ -20,12 +21,13 @@ if TYPE_CHECKING:
     import pint
 
     from .population import Population
+    from .weighing import Dying
 
 Array = NDArray[np.float64]
 Convention = Literal["total", "net"]
 
 
-@dataclass(frozen=True, eq=False)
+@dataclass(frozen=True, eq=False, repr=False)
 class PopulationYields:
     """Yields of a stellar population, per Msun formed.
 
@@ -37,9 +39,11 @@ class PopulationYields:
         yr.
     species : tuple of str
     sources : tuple of str
-    cumulative, rates : ndarray, shape (sources, t, 2 species + 5)
-        Everything by source: totals, net yields and accounts (`Columns`), Msun per
-        Msun formed up to an age, and Msun per yr and Msun formed at it.
+    cumulative : ndarray, shape (sources, t, 2 species + 5)
+        Everything by source up to each age: totals, net yields and accounts
+        (`Columns`), Msun per Msun formed.
+    dying : Dying
+        Who dies at each age: `rates` are made of it when asked for.
     living : ndarray, shape (t,)
         Mass in living stars.
     remnants_by_kind : dict of ndarray, shape (t,)
@@ -57,13 +61,24 @@ class PopulationYields:
     species: tuple[str, ...]
     sources: tuple[str, ...]
     cumulative: Array
-    rates: Array
+    dying: Dying
     living: Array
     remnants_by_kind: dict[str, Array]
     events: dict[str, Array]
     event_rates: dict[str, Array]
     followed: NDArray[np.bool_]
     notes: tuple[str, ...]
+
+    def __repr__(self) -> str:
+        return (
+            f"PopulationYields(Z = {self.population.metallicity:g}, {len(self.ages)} ages,"
+            f" {len(self.species)} species, sources {', '.join(self.sources)})"
+        )
+
+    @cached_property
+    def rates(self) -> Array:
+        """Everything by source at each age, per yr; shape and columns as of `cumulative`."""
+        return self.dying.rates()
 
     @property
     def columns(self) -> Columns:
@@ -111,7 +126,9 @@ class PopulationYields:
         kinds = [s.kind for s in self.population.sources if s.kind in ("agb", "core-collapse")]
         out: list[dict[str, Any]] = []
         for span in self.population.prepared.spans:
-            how = f"{span.how}, imploding" if span.implodes else span.how
+            how = span.how
+            if span.implodes:
+                how += ", imploding" if span.implodes == 1 else f", {span.implodes:g} imploding"
             one = {"from": span.lo, "to": span.hi, "source": kinds[span.owner], "served_by": how}
             if out and all(out[-1][k] == one[k] for k in ("source", "served_by")):
                 out[-1]["to"] = span.hi

@@ -8,7 +8,7 @@ it knows nothing of species, so one matrix product gives all of them at all ages
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -37,10 +37,12 @@ class Segments:
         How much of each end value is each published model's.
     owner : ndarray of int, shape (s,)
         Stellar source that the ejecta count for.
-    collapse, implodes : ndarray of bool, shape (s,)
-        Core-collapse events; those of them that implode.
-    remnant : ndarray of int, shape (s,)
-        0 white dwarf, 1 neutron star, 2 black hole.
+    collapse : ndarray of bool, shape (s,)
+        Core-collapse events.
+    implodes : ndarray, shape (s,)
+        The share of them that implodes.
+    remnants : ndarray, shape (s, e, 3)
+        Remnant mass by kind (white dwarf, neutron star, black hole), as `coefficients`.
     """
 
     edge: Array
@@ -48,8 +50,8 @@ class Segments:
     share: Array
     owner: NDArray[np.int_]
     collapse: NDArray[np.bool_]
-    implodes: NDArray[np.bool_]
-    remnant: NDArray[np.int_]
+    implodes: Array
+    remnants: Array
 
     @property
     def lo(self) -> Array:
@@ -82,31 +84,30 @@ def segments(
     -------
     Segments
     """
-    edge, blocks, shares, owner, collapse, implodes, kind = [spans[0].lo], [], [], [], [], [], []
+    edge, blocks, remnants, shares = [spans[0].lo], [], [], []
+    owner, collapse, implodes = [], [], []
     for span in spans:
-        curve = span.curve
-        if span.collapse and neutron_star_limit is not None:
-            curve = _cut_at(curve, remnant_column, neutron_star_limit)
-        n = len(curve.mass) - 1
-        width = np.diff(curve.mass)[:, None]
-        ends = [curve.values[:-1], curve.values[1:]]
-        if cubic:
-            if curve.slopes is None:
-                rise = np.diff(curve.values, axis=0)
-                ends += [rise, rise]
-            else:
-                ends += [curve.slopes[:-1] * width, curve.slopes[1:] * width]
-        blocks.append(np.stack(ends, axis=1))
+        limit = neutron_star_limit if span.collapse else None
+        nodes = span.curve.mass
+        if limit is not None:
+            for _, part in span.parts:
+                nodes = np.union1d(nodes, _cut_at(part, remnant_column, limit).mass)
+        curve = span.curve if len(nodes) == len(span.curve.mass) else span.curve.resample(nodes)
+        blocks.append(_ends(curve, cubic))
+        remnants.append(np.zeros((*blocks[-1].shape[:2], 3)))
+        for share, part in span.parts:
+            part = part.resample(nodes)
+            mass = _ends(part, cubic)[..., remnant_column]
+            kind = np.zeros(len(mass), dtype=int)
+            if limit is not None:
+                kind = np.where(_middles(part)[:, remnant_column] > limit, 2, 1)
+            remnants[-1][np.arange(len(mass)), :, kind] += share * mass
         shares.append(np.stack([curve.share[:-1], curve.share[1:]], axis=1))
-        edge += curve.mass[1:].tolist()
+        n = len(nodes) - 1
+        edge += nodes[1:].tolist()
         owner += [span.owner] * n
         collapse += [span.collapse] * n
         implodes += [span.implodes] * n
-        if span.collapse and neutron_star_limit is not None:
-            middle = _middles(curve)[:, remnant_column]
-            kind += np.where(middle > neutron_star_limit, 2, 1).tolist()
-        else:
-            kind += [0] * n
     return Segments(
         np.array(edge),
         np.concatenate(blocks),
@@ -114,8 +115,20 @@ def segments(
         np.array(owner),
         np.array(collapse),
         np.array(implodes),
-        np.array(kind),
+        np.concatenate(remnants),
     )
+
+
+def _ends(curve: Curve, cubic: bool) -> Array:
+    """Coefficients of a curve's segments, shape (s, e, q)."""
+    ends = [curve.values[:-1], curve.values[1:]]
+    if cubic and curve.slopes is None:
+        rise = np.diff(curve.values, axis=0)
+        ends += [rise, rise]
+    elif cubic:
+        width = np.diff(curve.mass)[:, None]
+        ends += [curve.slopes[:-1] * width, curve.slopes[1:] * width]
+    return np.stack(ends, axis=1)
 
 
 def _middles(curve: Curve) -> Array:
@@ -171,24 +184,52 @@ def dead_weights(imf: MassFunction, parts: Segments, turnoff: Array) -> Array:
     parts : Segments
         Tiling the mass function's limits.
     turnoff : ndarray, shape (t,)
-        Turn-off masses, Msun, decreasing.
+        Turn-off masses, Msun, in any order.
 
     Returns
     -------
     ndarray, shape (t, s, e)
         Stars per Msun formed, times the basis.
     """
+    return dead_integrals(imf, parts, turnoff, parts.coefficients.shape[1] - 1, basis)
+
+
+def dead_integrals(
+    imf: MassFunction, parts: Segments, turnoff: Array, order: int, form: Callable[[Array], Array]
+) -> Array:
+    """Return integrals of polynomials over the stars that are dead at each turn-off mass.
+
+    Parameters
+    ----------
+    imf : MassFunction
+    parts : Segments
+        Tiling the mass function's limits.
+    turnoff : ndarray, shape (t,)
+        Turn-off masses, Msun, in any order.
+    order : int
+        Highest power.
+    form : callable
+        Takes moments, shape (order + 1, p): int x^k phi dm over p intervals, x from 0 to 1
+        across the segment; gives the integrals wanted, shape (p, ...).
+
+    Returns
+    -------
+    ndarray, shape (t, s, ...)
+    """
+    if np.any(turnoff[1:] > turnoff[:-1]):
+        falling = np.argsort(-turnoff, kind="stable")
+        sorted_ones = dead_integrals(imf, parts, turnoff[falling], order, form)
+        return sorted_ones[np.argsort(falling, kind="stable")]
     lo, hi = imf.limits
-    ends = parts.coefficients.shape[1]
     inside = turnoff[(turnoff > lo) & (turnoff < hi)]
     cuts = np.unique(np.concatenate([parts.edge, imf.breaks, inside]))
     cuts = cuts[(cuts >= lo) & (cuts <= hi)]
     a, b = cuts[:-1], cuts[1:]
     which = np.searchsorted(parts.edge, b, side="left") - 1
-    moments = imf.moments(a, b, parts.lo[which], parts.width[which], ends - 1)
+    integrals = form(imf.moments(a, b, parts.lo[which], parts.width[which], order))
     when = np.searchsorted(-turnoff, -a, side="left")
-    added = np.zeros((len(turnoff) + 1, len(parts.lo), ends))
-    np.add.at(added, (when, which), basis(moments))
+    added = np.zeros((len(turnoff) + 1, len(parts.lo), *integrals.shape[1:]))
+    np.add.at(added, (when, which), integrals)
     return np.cumsum(added[:-1], axis=0)
 
 

@@ -35,7 +35,7 @@ def command(
     element: Annotated[
         list[str] | None,
         typer.Option(
-            "--element",
+            "--elements",
             "-e",
             metavar="LIST",
             help="Elements or nuclides, such as O,Mg,Fe; may be given again. Default: the file's list,"
@@ -65,9 +65,9 @@ def command(
 
     \b
     Examples:
-      steelyard leverage --element O,Fe --output results
-      steelyard leverage --element Mn --age "100 Myr, 13.8 Gyr" --net --top 5 --no-figures
-      steelyard leverage --element O --json
+      steelyard leverage --elements O,Fe --output results
+      steelyard leverage --elements Mn --age "100 Myr, 13.8 Gyr" --net --top 5 --no-figures
+      steelyard leverage --elements O --json
     """
     if top < 1:
         raise InputError(f"{top} models can't be listed", where="--top", mend="give 1 or more")
@@ -96,8 +96,8 @@ def command(
 
 def _elements(population: Population, asked: Sequence[str]) -> list[str]:
     if asked:
-        with told("--element"):
-            named = [one for text in asked for one in terminal.words(text, "--element")]
+        with told("--elements"):
+            named = [one for text in asked for one in terminal.words(text, "--elements")]
             return list(dict.fromkeys(parse(one).name for one in named))
     if not isinstance(population.species, str):
         return [parse(one).name for one in population.species]

@@ -262,14 +262,39 @@ def _bracket_slope(grid: Sequence[float], z: float, at: tuple[int, ...]) -> tupl
     return (-slope, slope)
 
 
-def birth_and_slope(species: Sequence[str], metallicity: float, solar: str) -> tuple[Array, Array]:
-    """Return mass fractions at birth and their derivatives to metallicity, shape (o,) each.
+@dataclass(frozen=True, eq=False)
+class Birth:
+    """Mass fractions at birth, straight lines in Z on either side of the solar value.
 
-    Birth compositions are straight lines in Z on either side of the solar value, so a
-    finite difference on one side is exact.
+    Attributes
+    ----------
+    sun : float
+        Z of the Sun.
+    start, solar : ndarray, shape (o,)
+        Mass fractions at Z = 0 and at the Sun's.
+    above : ndarray, shape (o,)
+        Their derivatives to Z beyond the Sun.
     """
-    here = birth_composition(species, metallicity, solar)
-    sun = sum(x for element, x in mixture(solar).mass_fractions().items() if element not in ("H", "He", "Li"))
-    step = -0.25 * sun if 0.5 * sun <= metallicity < sun else 0.25 * sun
-    there = birth_composition(species, metallicity + step, solar)
-    return here, (there - here) / step
+
+    sun: float
+    start: Array
+    solar: Array
+    above: Array
+
+    def at(self, z: float) -> Array:
+        """Return the mass fractions at a metallicity."""
+        if z < self.sun:
+            return self.start + (self.solar - self.start) * (z / self.sun)
+        return self.solar + self.above * (z - self.sun)
+
+    def slope(self, z: float) -> Array:
+        """Return their derivatives to it; at the Sun's those beyond it."""
+        return (self.solar - self.start) / self.sun if z < self.sun else self.above
+
+
+def birth(species: Sequence[str], solar: str) -> Birth:
+    """Return the mass fractions at birth of some species (see `composition.birth_composition`)."""
+    fractions = mixture(solar).mass_fractions()
+    sun = float(sum(x for element, x in fractions.items() if element not in ("H", "He", "Li")))
+    none, here, beyond = (birth_composition(species, z, solar) for z in (0.0, sun, 1.25 * sun))
+    return Birth(sun, none, here, (beyond - here) / (0.25 * sun))

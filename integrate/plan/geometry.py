@@ -14,6 +14,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from .intervals import WIDEST_RATIO, Intervals
+from .mass_shape import Family
 
 Array = NDArray[np.float64]
 
@@ -60,7 +61,7 @@ class Geometry:
 def geometry(
     edge: Array,
     owner: NDArray[np.int_],
-    shape_edges: Array,
+    mass_functions: Family,
     turnoff: Array,
     ends: int,
     ejecting: NDArray[np.bool_],
@@ -73,8 +74,7 @@ def geometry(
     edge : ndarray, shape (s + 1,)
         Ends of the segments, Msun.
     owner : ndarray of int, shape (s,)
-    shape_edges : ndarray
-        Limits and breaks of the mass function, Msun.
+    mass_functions : Family
     turnoff : ndarray, shape (t,)
         Msun.
     ends : int
@@ -89,6 +89,7 @@ def geometry(
     -------
     Geometry
     """
+    shape_edges = mass_functions.edges
     lo, hi = shape_edges[0], shape_edges[-1]
     cuts = np.concatenate([edge, shape_edges, [boundary[0]] if boundary else []])
     cuts = np.unique(cuts[(cuts >= lo) & (cuts <= hi)])
@@ -118,6 +119,7 @@ def geometry(
         np.concatenate([unit[kept], unit[at]]),
         np.concatenate([imf_piece[kept], imf_piece[at]]),
         ends,
+        mass_functions.pieces,
     )
     alive = (turnoff > lo) & (turnoff <= hi)
     return Geometry(ends_of, parent, owned, inside, place, alive, kept, intervals)

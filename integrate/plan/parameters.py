@@ -111,6 +111,13 @@ def _find(name: str, population: Population, species: Sequence[str]) -> Paramete
     at = _source(head, population, name)
     source = population.sources[at]
     if key == "events_from" and isinstance(source, StellarSource) and source.kind == "core-collapse":
+        entries = [m.name for m in source.sets]
+        own = min(s.lo for s in population.prepared.spans if s.how in entries)
+        if any(lo < own for lo, *_ in source.implosions):
+            raise InputError(
+                f"{name} can't be free where stars that implode stand below the source's models",
+                mend=f"let implode begin at {own:g} Msun",
+            )
         return Parameter(name, "events_from", source.events_from, at)
     if isinstance(source, DelayedSource):
         if key == "number":

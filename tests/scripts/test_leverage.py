@@ -45,7 +45,7 @@ def refused(*args):
 
 
 def test_table_sentences_and_files():
-    text = run("leverage", "--element", "O,Fe", "--top", "2", "-o", "out")
+    text = run("leverage", "--elements", "O,Fe", "--top", "2", "-o", "out")
     lines = text.splitlines()
     iron = next(line for line in lines if line.startswith("Fe"))
     assert iron.split()[1:3] == ["nomoto-1997-w7,", "event"] and "53.2 %" in iron
@@ -72,7 +72,7 @@ def test_shares_of_ranges_sum_to_a_hundred():
 
 
 def test_json_is_all_that_is_printed_and_sums():
-    told = json.loads(run("leverage", "--element", "O", "--age", "10 Myr, 13.8 Gyr", "--net", "--json"))
+    told = json.loads(run("leverage", "--elements", "O", "--age", "10 Myr, 13.8 Gyr", "--net", "--json"))
     assert told["ages_yr"] == [1e7, 13.8e9] and told["convention"] == "net"
     made = sum(np.array(told["contribution"][s]["O"]).sum(axis=1) for s in told["sources"])
     born = sum(np.array(told["birth_composition"][s]["O"]) for s in told["sources"])
@@ -100,9 +100,9 @@ def test_own_population_file_and_its_elements():
 @pytest.mark.parametrize(
     ("words", "said"),
     [
-        (["-e", "Xx"], "--element: species 'Xx' isn't known"),
+        (["-e", "Xx"], "--elements: species 'Xx' isn't known"),
         (["-e", "U"], "no set of the population follows U"),
-        (["-e", ","], "--element names nothing"),
+        (["-e", ","], "--elements names nothing"),
         (["--top", "0"], "give 1 or more"),
         (["--age", "-3 Myr"], "age is negative"),
         (["nowhere.toml"], "there is no such file"),
