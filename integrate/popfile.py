@@ -19,9 +19,9 @@ from steelyard.yields.errors import InputError, nearest
 from steelyard.yields.library import DEFAULT_SOLAR, catalogue
 from steelyard.yields.nuclides import parse
 
-from .imf import MassFunction, imf, kroupa_2001
-from .laws import PowerLawIMF, SlopeLaw, number_law, slope_law
+from .laws import number_law
 from .lifetimes import LAWS
+from .popforms import read_delay, read_failures, read_imf, read_mixture
 from .poptext import FUNCTION, SETS, population_to_toml
 from .population import DEFAULT_AGES, Population
 from .population import read_ages as checked
@@ -31,7 +31,6 @@ from .sources import (
     STELLAR_KINDS,
     DelayedSource,
     Edges,
-    FailureTable,
     Join,
     Source,
     StellarSource,
@@ -155,7 +154,7 @@ def population_from_dict(data: Mapping[str, Any], where: str = "population") -> 
         return Population(
             metallicity=as_number(table["metallicity"], "", "metallicity"),
             sources=_sources(table["source"]),
-            imf=_imf(table.get("imf")),
+            imf=read_imf(table.get("imf")),
             lifetimes=_lifetimes(table.get("lifetimes", {})),
             joins=_joins(table.get("join", [])),
             edges=_edges(table.get("edges", {})),
@@ -253,23 +252,13 @@ def _stellar(value: Mapping[str, Any]) -> StellarSource:
         if key in table:
             given[key] = as_number(table[key], "Msun", key)
     if isinstance(table.get("implode"), Mapping):
-        given["implode"] = _failures(table["implode"])
+        given["implode"] = read_failures(table["implode"])
     elif "implode" in table:
         windows = as_list(table["implode"], "implode", 'such as [["20 Msun", "25 Msun"]]')
         given["implode"] = [as_numbers(w, "Msun", "implode") for w in windows]
     if "winds" in table:
         given["winds"] = as_word(table["winds"], "winds")
     return StellarSource(table["kind"], _sets(table["sets"]), **given)
-
-
-def _failures(value: Mapping[str, Any]) -> FailureTable:
-    known = ("masses", "probability")
-    with told("implode"):
-        table = as_table(value, "implode", known)
-        require(table, known, "the table")
-        return FailureTable(
-            as_numbers(table["masses"], "Msun", "masses"), as_numbers(table["probability"], "", "probability")
-        )
 
 
 def _delayed(value: Mapping[str, Any]) -> DelayedSource:
@@ -286,7 +275,7 @@ def _delayed(value: Mapping[str, Any]) -> DelayedSource:
     number = (
         number_law(number, "number") if isinstance(number, Mapping) else as_number(number, "1/Msun", "number")
     )
-    return DelayedSource(kind, _sets(table["sets"]), number, _delay(table["delay"]), consumes)
+    return DelayedSource(kind, _sets(table["sets"]), number, read_delay(table["delay"]), consumes)
 
 
 def _sets(value: Any) -> list[Any]:
@@ -294,105 +283,13 @@ def _sets(value: Any) -> list[Any]:
     entries = []
     for entry in as_list(value, "sets", example):
         if isinstance(entry, Mapping):
-            entries.append(_mixture(entry))
+            entries.append(read_mixture(entry))
         else:
             entries.append(as_word(entry, "an entry of sets"))
         for name in entry if isinstance(entry, Mapping) else [entry]:
             if name not in catalogue() and name not in _WINDOW:
                 raise InputError(f"yield set {short(name)} isn't known", mend=nearest(name, catalogue()))
     return entries
-
-
-def _mixture(entry: Mapping[str, Any]) -> dict[str, Any]:
-    """Sets with their shares, the masses served, and the metallicities that lists of shares are for."""
-    several = "metallicities" in entry
-    out: dict[str, Any] = {}
-    for name, value in entry.items():
-        if name in ("from", "to"):
-            out[name] = as_number(value, "Msun", name)
-        elif name == "metallicities":
-            out[name] = as_numbers(value, "", name)
-        elif several and isinstance(value, list):
-            out[name] = as_numbers(value, "", f"share of {short(name)}")
-        else:
-            out[name] = as_number(value, "", f"share of {short(name)}")
-    return out
-
-
-def _delay(value: Any) -> Any:
-    if isinstance(value, str):
-        return value
-    if not isinstance(value, Mapping):
-        raise InputError(f"delay is a table, not {short(value)}", mend='such as { form = "power-law", … }')
-    if value.get("form") == FUNCTION:
-        raise InputError("the delay was a function, which a file can't hold", mend="weigh it from Python")
-    units = {"slope": "", "slopes": "", "densities": "", "timescale": "yr"}
-    read: dict[str, Any] = {}
-    for key, one in value.items():
-        if key == "form":
-            read[key] = as_word(one, "delay.form")
-        elif key == "slope" and isinstance(one, Mapping):
-            read[key] = slope_law(one, "delay.slope")
-        elif key == "slopes":
-            read[key] = _slopes(one, "delay.slopes")
-        else:
-            make = as_numbers if isinstance(one, list) else as_number
-            read[key] = make(one, units.get(key, "yr"), f"delay.{key}")
-            wants_list = key in ("slopes", "breaks", "limits", "ages", "densities")
-            if key in (*units, "breaks", "limits", "ages") and wants_list != isinstance(one, list):
-                raise InputError(f"delay.{key} {'needs a list' if wants_list else 'is one number'}")
-    return read
-
-
-def _imf(value: Any) -> MassFunction | PowerLawIMF:
-    if value is None:
-        return kroupa_2001()
-    if not isinstance(value, Mapping):
-        raise InputError(f"imf is a table, not {short(value)}", mend='head it with [imf], then form = "…"')
-    if value.get("form") == FUNCTION:
-        raise InputError(
-            "the mass function was a function, which a file can't hold", mend="weigh it from Python"
-        )
-    require(value, ("form",), "[imf]")
-    read: dict[str, Any] = {}
-    for key, one in value.items():
-        if key == "form":
-            read[key] = as_word(one, "imf.form")
-        elif key == "slopes":
-            read[key] = _slopes(one, "imf.slopes")
-        elif key in ("limits", "breaks"):
-            read[key] = as_numbers(one, "Msun", f"imf.{key}")
-        elif key in ("centre", "sigma"):
-            read[key] = as_number(one, "" if key == "sigma" else "Msun", f"imf.{key}")
-        else:
-            read[key] = one  # refused by name below
-    laws = [s for s in read.get("slopes", []) if isinstance(s, SlopeLaw)]
-    first = (
-        {**read, "slopes": [s.value if isinstance(s, SlopeLaw) else s for s in read["slopes"]]}
-        if laws
-        else read
-    )
-    try:
-        with np.errstate(all="ignore"):
-            made = imf(**first)
-            formed = float(made.mass(*made.limits))
-    except InputError:
-        raise
-    except (ArithmeticError, ValueError):
-        formed = np.nan
-    if not abs(formed - 1) < 1e-6:
-        raise InputError(
-            "the mass function can't be normalised with these numbers", where="imf", mend="check its slopes"
-        )
-    if laws:
-        return PowerLawIMF(**{key: one for key, one in read.items() if key != "form"})
-    return made
-
-
-def _slopes(value: Any, name: str) -> list[Any]:
-    """Slopes, each a number or a law of metallicity."""
-    found = as_list(value, name, "such as [1.3, 2.3]")
-    return [slope_law(one, name) if isinstance(one, Mapping) else as_number(one, "", name) for one in found]
 
 
 def _lifetimes(value: Any) -> str:

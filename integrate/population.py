@@ -122,6 +122,18 @@ class Population:
         """Kinds of the sources, in the order given."""
         return tuple(s.kind for s in self.sources)
 
+    @property
+    def laws(self) -> tuple[str, ...]:
+        """What a law of metallicity gave, and what gives another value at another metallicity."""
+        out = ["imf"] if law_of(self.imf) else []
+        for source in self.sources:
+            out += [
+                f"{source.kind}.{key}" for key in ("number", "delay") if law_of(getattr(source, key, None))
+            ]
+            if any(law_of(entry.shares) for entry in source.sets):
+                out.append(f"{source.kind}.sets")
+        return tuple(out)
+
     @cached_property
     def prepared(self) -> Prepared:
         """All that doesn't depend on ages: spans, coefficients, events, notes."""

@@ -12,8 +12,9 @@ from itertools import pairwise
 import numpy as np
 from numpy.typing import NDArray
 
-from steelyard.yields.curve import Curve
+from steelyard.yields.curve import Curve, blend
 from steelyard.yields.errors import InputError
+from steelyard.yields.nuclides import parse
 
 from .sources import Edges, Join, StellarSource
 from .tracks import Columns, Track
@@ -37,8 +38,11 @@ class Span:
         From lo to hi; columns as in `Columns`.
     collapse : bool
         Whether the stars that die here are core-collapse events.
-    implodes : bool
-        Whether they fall in a window that implodes.
+    implodes : float
+        The share of them that implodes.
+    outcomes : tuple of Curve
+        Where only a share implodes: what those that explode leave, and those that
+        implode. `curve` is their mean.
     """
 
     lo: float
@@ -47,7 +51,15 @@ class Span:
     how: str
     curve: Curve
     collapse: bool = False
-    implodes: bool = False
+    implodes: float = 0.0
+    outcomes: tuple[Curve, ...] = ()
+
+    @property
+    def parts(self) -> tuple[tuple[float, Curve], ...]:
+        """The ways in which stars of these masses may end: the share of each, and its curve."""
+        if not self.outcomes:
+            return ((1.0, self.curve),)
+        return tuple(zip((1.0 - self.implodes, self.implodes), self.outcomes, strict=True))
 
 
 @dataclass(frozen=True, eq=False)
@@ -67,12 +79,12 @@ class Ground:
     birth: Array
     limits: tuple[float, float]
 
-    def row(self, mass: float, remnant: float, birth: Array | None = None) -> Array:
+    def row(self, mass: float, remnant: float) -> Array:
         """Return the row of a star that ejects ``mass - remnant`` at birth composition."""
-        x = self.birth if birth is None else birth
         ejected = mass - remnant
-        accounts = [ejected * (1 - float(x.sum())), 0.0, ejected, remnant, 0.0]
-        return np.concatenate([ejected * x, np.zeros(len(x)), accounts])
+        listed = float(self.birth[self.columns.apart].sum())
+        accounts = [ejected * (1 - listed), 0.0, ejected, remnant, 0.0]
+        return np.concatenate([ejected * self.birth, np.zeros(len(self.birth)), accounts])
 
 
 def spans(
@@ -107,6 +119,9 @@ def spans(
     """
     notes: list[str] = []
     policy = {j.between: j.policy for j in joins}
+    if len(policy) < len(joins):
+        twice = next(j.between for j in joins if [k.between for k in joins].count(j.between) > 1)
+        raise InputError(f"the join between {' and '.join(twice)} is declared twice", mend="keep one of them")
     served: list[list[Span]] = []
     at = 0
     for i, (source, entries) in enumerate(zip(sources, tracks, strict=True)):
@@ -136,14 +151,14 @@ def _series(
 ) -> tuple[list[Span], int]:
     """The spans of one source: each entry where it has models and none before it has."""
     taken: list[Span] = []
-    for entry in entries:
+    for declared, entry in zip(source.sets, entries, strict=True):
         share = np.zeros((len(entry.curve.mass), total))
         share[:, at : at + len(entry.models)] = entry.curve.share
         at += len(entry.models)
         curve = replace(entry.curve, share=share)
         lo, hi = curve.span
-        if source.limits is not None:
-            lo, hi = max(lo, source.limits[0]), min(hi, source.limits[1])
+        for low, high in (source.limits or (None, None), declared.limits):
+            lo, hi = lo if low is None else max(lo, low), hi if high is None else min(hi, high)
         for a, b in _free(lo, hi, [(s.lo, s.hi) for s in taken]):
             taken.append(Span(a, b, owner, entry.name, curve.between(a, b)))
     taken.sort(key=lambda s: s.lo)
@@ -200,7 +215,7 @@ def _between(
             f"there is a gap without a join: {lower.hi:g}-{upper.lo:g} Msun between {a.kind} and {b.kind}",
             mend=f'add [[join]] between = ["{a.kind}", "{b.kind}"] with policy = "bridge" or another',
         )
-    lower, upper = _filled(lower, upper, tracks, ground, notes)
+    lower, upper = _filled(chosen, lower, upper, tracks, ground, notes)
     curve = _joined(chosen, lower, upper, ground)
     edge = min(max(b.events_from, lower.hi), upper.lo) if b.kind == "core-collapse" else upper.lo
     out = []
@@ -212,33 +227,42 @@ def _between(
 
 
 def _filled(
-    lower: Span, upper: Span, tracks: Sequence[Sequence[Track]], ground: Ground, notes: list[str]
+    policy: str,
+    lower: Span,
+    upper: Span,
+    tracks: Sequence[Sequence[Track]],
+    ground: Ground,
+    notes: list[str],
 ) -> tuple[Span, Span]:
-    """The two ends of a join, each lent birth composition for what only the other follows."""
+    """The two ends of a join, each lent birth composition for elements that only the other follows."""
+    c = ground.columns
+    below, above = _serving(lower, tracks, True), _serving(upper, tracks, False)
     ends = []
-    follow = [_followed(lower, tracks, True), _followed(upper, tracks, False)]
-    for span, row, own, other in ((lower, -1, *follow), (upper, 0, *reversed(follow))):
-        lent = other & ~own
+    for span, row, own, other, used in (
+        (lower, -1, below, above, ("bridge", "reach-up")),
+        (upper, 0, above, below, ("bridge", "reach-down")),
+    ):
+        lent = np.array([parse(s).symbol not in own.elements for s in c.species], dtype=bool) & other.followed
+        if policy not in used or not lent.any():
+            ends.append(span)
+            continue
         values = span.curve.values.copy()
-        if lent.any():
-            c = ground.columns
-            added = np.where(lent, ground.birth * values[row, c.account("ejected")], 0.0)
-            values[row, c.total] += added
-            values[row, c.account("rest_total")] -= added.sum()
-            names = ", ".join(s for s, x in zip(c.species, lent, strict=True) if x)
-            notes.append(
-                f"join {lower.hi:g}-{upper.lo:g} Msun: {span.how} doesn't follow {names};"
-                " its end is taken at birth composition"
-            )
+        added = np.where(lent, ground.birth * other.cover * values[row, c.account("ejected")], 0.0)
+        values[row, c.total] += added
+        values[row, c.account("rest_total")] -= added[c.apart].sum()
+        names = ", ".join(dict.fromkeys(parse(s).symbol for s, x in zip(c.species, lent, strict=True) if x))
+        notes.append(
+            f"join {lower.hi:g}-{upper.lo:g} Msun: {span.how} doesn't follow {names};"
+            " its end is taken at birth composition"
+        )
         ends.append(replace(span, curve=replace(span.curve, values=values)))
     return ends[0], ends[1]
 
 
-def _followed(span: Span, tracks: Sequence[Sequence[Track]], last: bool) -> NDArray[np.bool_]:
-    for entry in tracks[span.owner]:
-        if entry.name == span.how:
-            return entry.followed
-    return tracks[span.owner][-1 if last else 0].followed
+def _serving(span: Span, tracks: Sequence[Sequence[Track]], last: bool) -> Track:
+    """The entry whose models a span ends with."""
+    own = [t for t in tracks[span.owner] if t.name == span.how]
+    return own[0] if own else tracks[span.owner][-1 if last else 0]
 
 
 def _joined(policy: str, lower: Span, upper: Span, ground: Ground) -> Curve:
@@ -314,43 +338,63 @@ def _events(
         )
         out = [p for s in out for p in _split(s, [lowest])]
         out = [replace(s, collapse=s.owner == i and s.lo >= lowest) for s in out]
-        for a, b in source.implode:
+        for a, b, probability in source.implosions:
             out = [p for s in out for p in _split(s, [a, b])]
+            mine = [s.collapse and a <= s.lo and s.hi <= b for s in out]
             out = [
-                _imploded(s, tracks[i], ground) if s.collapse and a <= s.lo and s.hi <= b else s for s in out
+                _imploded(s, probability, tracks[i], ground) if own else s
+                for s, own in zip(out, mine, strict=True)
             ]
-            if not any(s.implodes and a <= s.lo and s.hi <= b for s in out):
+            if probability and not any(mine):
                 notes.append(
                     f"{source.kind}: no star that collapses is born at {a:g}-{b:g} Msun, which should implode"
                 )
-        if source.implode and not any(
-            s.curve.values[:, ground.columns.account("ejected")].any() for s in out if s.implodes
+        imploding = [s.outcomes[1] if s.outcomes else s.curve for s in out if s.implodes]
+        if source.implosions and not any(
+            curve.values[:, ground.columns.account("ejected")].any() for curve in imploding
         ):
             notes.append(f"{source.kind}: the sets list no winds apart; stars that implode eject nothing")
     return out
 
 
 def _top(inner: Sequence[Span], owner: int) -> float:
-    return max(s.hi for s in inner if s.owner == owner)
+    return max((s.hi for s in inner if s.owner == owner), default=0.0)
 
 
 def _split(span: Span, masses: Sequence[float]) -> list[Span]:
     edges = [span.lo, *sorted(m for m in masses if span.lo < m < span.hi), span.hi]
     if len(edges) == 2:
         return [span]
-    return [replace(span, lo=a, hi=b, curve=span.curve.between(a, b)) for a, b in pairwise(edges)]
+    return [
+        replace(
+            span,
+            lo=a,
+            hi=b,
+            curve=span.curve.between(a, b),
+            outcomes=tuple(one.between(a, b) for one in span.outcomes),
+        )
+        for a, b in pairwise(edges)
+    ]
 
 
-def _imploded(span: Span, entries: Sequence[Track], ground: Ground) -> Span:
-    """A span whose stars eject their wind only; outside the sets' own models, nothing."""
-    for entry in entries:
-        if entry.name == span.how:
-            curve = entry.imploded.between(span.lo, span.hi)
-            share = np.zeros((len(curve.mass), span.curve.share.shape[1]))
-            return replace(span, curve=replace(curve, share=share), implodes=True)
-    values = np.stack([ground.row(span.lo, span.lo), ground.row(span.hi, span.hi)])
-    share = np.zeros((2, span.curve.share.shape[1]))
-    return replace(span, curve=Curve(np.array([span.lo, span.hi]), values, None, share), implodes=True)
+def _imploded(span: Span, probability: float, entries: Sequence[Track], ground: Ground) -> Span:
+    """A span of which a share of stars ejects its wind only; outside the sets' own models, nothing."""
+    if not probability:
+        return span
+    entry = next((e for e in entries if e.name == span.how), None)
+    if entry is not None:
+        wind = entry.imploded.between(span.lo, span.hi)
+    else:
+        values = np.stack([ground.row(span.lo, span.lo), ground.row(span.hi, span.hi)])
+        wind = Curve(np.array([span.lo, span.hi]), values, None, np.zeros((2, 0)))
+    wind = replace(wind, share=np.zeros((len(wind.mass), span.curve.share.shape[1])))
+    if probability == 1:
+        return replace(span, curve=wind, implodes=1.0)
+    both = (span.curve, wind)
+    mean = blend(both, (1 - probability, probability))
+    # the wind is nobody's: `blend` puts the shares side by side, the exploding stars' first
+    mean = replace(mean, share=mean.share[:, : span.curve.share.shape[1]])
+    return replace(span, curve=mean, implodes=probability, outcomes=both)
 
 
 def _check_joins(

@@ -3,16 +3,50 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
+from itertools import pairwise
 from typing import Any
 
 from steelyard.yields.curve import METHODS
 from steelyard.yields.errors import InputError, nearest
 from steelyard.yields.grid import YieldSet
-from steelyard.yields.library import load
 from steelyard.yields.units import plain
 
 from .delays import Delay, delay
+from .failures import FailureTable, mass_range
+from .failures import implosions as read_implosions
+from .laws import (
+    Given,
+    SlopeLaw,
+    VaryingDelay,
+    law_of,
+    named,
+    number_law,
+    slope_law,
+    with_law,
+)
+from .mixtures import Mixed, SetChoice, mixed, set_id
+from .popvalues import told
+
+__all__ = [
+    "EDGE_ABOVE",
+    "EDGE_BELOW",
+    "JOIN_POLICIES",
+    "REMNANTS",
+    "STELLAR_KINDS",
+    "DelayedSource",
+    "Edges",
+    "FailureTable",
+    "Join",
+    "Mixed",
+    "SetChoice",
+    "Source",
+    "StellarSource",
+    "interpolation",
+    "mass_range",
+    "mixed",
+    "set_id",
+]
 
 #: kinds of source whose stars eject when they die
 STELLAR_KINDS = ("agb", "core-collapse")
@@ -26,68 +60,6 @@ EDGE_ABOVE = ("swallow", "reach-up", "return-only")
 
 REMNANTS = ("white dwarf", "neutron star", "black hole")
 
-SetChoice = str | YieldSet
-
-
-@dataclass(frozen=True)
-class Mixed:
-    """Sets that share the same stars or events.
-
-    Attributes
-    ----------
-    sets : tuple of str or YieldSet
-    shares : tuple of float
-        Positive, summing to 1.
-    """
-
-    sets: tuple[SetChoice, ...]
-    shares: tuple[float, ...]
-
-    def __post_init__(self) -> None:
-        if not self.sets or len(self.sets) != len(self.shares):
-            raise InputError(
-                "a mixture needs one share for each set", mend='such as { "set-a" = 0.7, "set-b" = 0.3 }'
-            )
-        if min(self.shares) < 0 or abs(sum(self.shares) - 1) > 1e-9:
-            raise InputError(
-                f"shares of a mixture must be positive and sum to 1, not {sum(self.shares):g}",
-                mend="scale the shares",
-            )
-
-    @property
-    def name(self) -> str:
-        """The ids of the sets with their shares."""
-        if len(self.sets) == 1:
-            return set_id(self.sets[0])
-        return " + ".join(
-            f"{share:g} {set_id(one)}" for one, share in zip(self.sets, self.shares, strict=True)
-        )
-
-    def load(self, solar: str) -> tuple[YieldSet, ...]:
-        """Return the sets themselves, loading those given by id."""
-        return tuple(one if isinstance(one, YieldSet) else load(one, solar) for one in self.sets)
-
-
-def set_id(one: SetChoice) -> str:
-    """Return the id of a set given by id or as itself."""
-    return one.id if isinstance(one, YieldSet) else one
-
-
-def mixed(entry: Any, where: str = "") -> Mixed:
-    """Read one entry of a source's ``sets``: an id, a YieldSet, or a mapping of ids to shares."""
-    if isinstance(entry, Mixed):
-        return entry
-    if isinstance(entry, (str, YieldSet)):
-        return Mixed((entry,), (1.0,))
-    if isinstance(entry, Mapping):
-        shares = tuple(plain(v, "", f"share of {set_id(k)}", where=where) for k, v in entry.items())
-        return Mixed(tuple(entry), shares)
-    raise InputError(
-        f"a set can't be read from {entry!r}",
-        where=where,
-        mend='give an id, or { "id" = share, ... } for a mixture',
-    )
-
 
 @dataclass(frozen=True)
 class StellarSource:
@@ -98,13 +70,17 @@ class StellarSource:
     kind : {"agb", "core-collapse"}
     sets : sequence
         Set ids, YieldSets or mixtures (mapping of id to share), in series: each
-        serves the masses where it has models and the ones before it have none.
+        serves the masses where it has models and the ones before it have none. In a
+        mixture, ``from`` and ``to`` (Msun) keep it to some masses, and with
+        ``metallicities`` each share is a list, one for each, linear in Z between.
     limits : pair, optional
         Initial masses served, Msun; default: all that the sets cover.
     events_from : float
         Lowest initial mass that dies as a core-collapse event, Msun.
-    implode : sequence of pairs
-        Windows of initial mass that implode and eject their wind only, Msun.
+    implode : sequence of pairs, or mapping
+        Windows of initial mass that implode and eject their wind only, Msun; or
+        ``{"masses": [...], "probability": [...]}``: the probability to implode between each
+        mass and the next, one fewer than masses, and 0 outside of them.
     winds : {"birth", "rest"}
         For sets that list only the explosion: whether the wind is returned with
         birth composition, or counted as ejected but given to no species.
@@ -139,12 +115,27 @@ class StellarSource:
         put = object.__setattr__
         put(self, "sets", tuple(mixed(s, where) for s in self.sets))
         put(self, "limits", None if self.limits is None else mass_range(self.limits, f"{where}: limits"))
-        put(self, "implode", tuple(mass_range(w, f"{where}: implode") for w in self.implode))
+        put(self, "implode", read_implosions(self.implode, f"{where}: implode"))
         for name in ("events_from", "neutron_star_limit"):
             value = plain(getattr(self, name), "Msun", name, where=where)
             if value <= 0:
                 raise InputError(f"{name} must be positive, not {value:g} Msun", where=where)
             put(self, name, value)
+
+    def at(self, metallicity: float) -> StellarSource:
+        """Return the source with the shares that its laws give at a metallicity."""
+        with told(f"source {self.kind}"):
+            sets = tuple(entry.at(metallicity) for entry in self.sets)
+        same = all(a is b for a, b in zip(sets, self.sets, strict=True))
+        return self if same else replace(self, sets=sets)
+
+    @property
+    def implosions(self) -> tuple[tuple[float, float, float], ...]:
+        """Ranges of initial mass, Msun, with the probability that a star there implodes."""
+        if isinstance(self.implode, FailureTable):
+            ranges = zip(pairwise(self.implode.masses), self.implode.probability, strict=True)
+            return tuple((lo, hi, p) for (lo, hi), p in ranges)
+        return tuple((lo, hi, 1.0) for lo, hi in self.implode)
 
     def to_dict(self) -> dict[str, Any]:
         """Return the source as a ``[[source]]`` table of the population file."""
@@ -153,7 +144,8 @@ class StellarSource:
             out["limits"] = list(self.limits)
         if self.kind == "core-collapse":
             out["events_from"] = self.events_from
-            out["implode"] = [list(w) for w in self.implode]
+            table = isinstance(self.implode, FailureTable)
+            out["implode"] = self.implode.to_dict() if table else [list(w) for w in self.implode]
             out["winds"] = self.winds
             out["neutron_star_limit"] = self.neutron_star_limit
         return out
@@ -169,10 +161,12 @@ class DelayedSource:
         ``"thermonuclear"``, or a name of the user's own.
     sets : sequence
         One entry: the set of the event's yields, or a mixture.
-    number : float
-        Events per Msun formed, over the delay's own limits.
-    delay : Delay or mapping
-        Distribution of delay times.
+    number : float, or callable
+        Events per Msun formed, over the delay's own limits. A function of metallicity, such
+        as a `NumberLaw`, gives it at the population's.
+    delay : Delay, mapping, or callable
+        Distribution of delay times. In a mapping a slope may be a `SlopeLaw`; a function of
+        metallicity gives a delay or a mapping.
     consumes : {"white dwarf", "neutron star", "black hole"}
         The remnant that an event uses up.
     """
@@ -201,21 +195,53 @@ class DelayedSource:
                 where=where,
                 mend=nearest(self.consumes, REMNANTS),
             )
-        number = plain(self.number, "1/Msun", "number", where=where)
-        if number < 0:
-            raise InputError(f"number is negative: {number:g} per Msun", where=where)
         put = object.__setattr__
         put(self, "sets", tuple(mixed(s, where) for s in self.sets))
-        put(self, "number", number)
-        put(self, "delay", self.delay if isinstance(self.delay, Delay) else delay(self.delay, where))
+        if self.sets[0].limits != (None, None):
+            raise InputError(
+                "events have no initial mass, so from and to mean nothing", where=where, mend="leave them out"
+            )
+        with told(where):
+            if isinstance(self.number, Mapping):
+                put(self, "number", number_law(self.number, "number"))
+            if not callable(self.number):
+                number = plain(self.number, "1/Msun", "number")
+                if number < 0:
+                    raise InputError(f"number is negative: {number:g} per Msun")
+                put(self, "number", self.number if isinstance(self.number, Given) else number)
+            if isinstance(self.delay, Mapping):
+                spec = {k: _slopes(v, f"delay.{k}") for k, v in self.delay.items()}
+                if any(isinstance(v, SlopeLaw) for v in _flat(spec.values())):
+                    put(self, "delay", VaryingDelay(spec))
+        if not isinstance(self.delay, Delay) and not callable(self.delay):
+            put(self, "delay", delay(self.delay, where))
+
+    def at(self, metallicity: float) -> DelayedSource:
+        """Return the source with what its laws give at a metallicity."""
+        where = f"source {self.kind}"
+        given: dict[str, Any] = {}
+        with told(where):
+            law = self.number if callable(self.number) else law_of(self.number)
+            if law:
+                value = plain(law(metallicity), "1/Msun", f"number at Z = {metallicity:g}")
+                if value < 0:
+                    raise InputError(f"number at Z = {metallicity:g} is negative: {value:g} per Msun")
+                given["number"] = Given(value, law)
+            law = self.delay if not isinstance(self.delay, Delay) else law_of(self.delay)
+            if law:
+                given["delay"] = with_law(delay(law(metallicity)), law)
+        sets = tuple(entry.at(metallicity) for entry in self.sets)
+        if any(a is not b for a, b in zip(sets, self.sets, strict=True)):
+            given["sets"] = sets
+        return replace(self, **given) if given else self
 
     def to_dict(self) -> dict[str, Any]:
         """Return the source as a ``[[source]]`` table of the population file."""
         return {
             "kind": self.kind,
             "sets": [_entry(m) for m in self.sets],
-            "number": self.number,
-            "delay": self.delay.to_dict(),
+            "number": _held(self.number),
+            "delay": _held(self.delay),
             "consumes": self.consumes,
         }
 
@@ -277,34 +303,35 @@ class Edges:
 Source = StellarSource | DelayedSource
 
 
-def mass_range(value: Any, name: str) -> tuple[float, float]:
-    """Read a pair of masses, Msun, the lower first.
-
-    Raises
-    ------
-    InputError
-        Not two masses, negative, or not in order.
-    """
-    array = plain(value, "Msun", name)
-    if getattr(array, "shape", ()) != (2,):
-        raise InputError(f"{name} needs two masses", mend='such as ["13 Msun", "40 Msun"]')
-    lo, hi = float(array[0]), float(array[1])
-    if lo <= 0:
-        raise InputError(f"{name}: mass isn't positive: {lo:g} Msun", mend="give masses above 0")
-    if lo >= hi:
-        raise InputError(f"{name}: {lo:g} isn't below {hi:g} Msun", mend="write the lower mass first")
-    return lo, hi
-
-
 def _policy(given: str, known: Sequence[str], where: str) -> None:
     if given not in known:
         raise InputError(f"policy {given!r} isn't known", where=where, mend=f"choose {', '.join(known)}")
 
 
 def _entry(one: Mixed) -> Any:
-    if len(one.sets) == 1:
-        return set_id(one.sets[0])
-    return {set_id(s): share for s, share in zip(one.sets, one.shares, strict=True)}
+    return one.to_entry([set_id(s) for s in one.sets])
+
+
+def _held(value: Any) -> Any:
+    """A number or a delay as a population file holds it: as its law, where a file can hold that."""
+    law = value if callable(value) else law_of(value)
+    if hasattr(law, "to_dict"):
+        return law.to_dict()
+    if callable(value):
+        return named(value)
+    return value.to_dict() if isinstance(value, Delay) else float(value)
+
+
+def _slopes(value: Any, where: str) -> Any:
+    """Read the laws among the numbers of a delay."""
+    if isinstance(value, Mapping):
+        return slope_law(value, where)
+    return [_slopes(one, where) for one in value] if isinstance(value, (list, tuple)) else value
+
+
+def _flat(values: Any) -> Any:
+    for value in values:
+        yield from value if isinstance(value, (list, tuple)) else (value,)
 
 
 def interpolation(method: str) -> str:

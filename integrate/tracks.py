@@ -3,14 +3,18 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
+from functools import cached_property
 
 import numpy as np
 from numpy.typing import NDArray
 
-from steelyard.yields.curve import ACCOUNTS, Curve, Method, blend, bracket, slice_curve
+from steelyard.yields.composition import birth_composition
+from steelyard.yields.curve import ACCOUNTS, Curve, Method, blend, bracket, imploded_curve, slice_curve
 from steelyard.yields.errors import InputError
-from steelyard.yields.grid import Slice, YieldSet
+from steelyard.yields.grid import YieldSet
+from steelyard.yields.library import DEFAULT_SOLAR
+from steelyard.yields.nuclides import isotopes, parse
 
 from .sources import Mixed
 
@@ -44,6 +48,13 @@ class Columns:
         """Length of a row."""
         return 2 * len(self.species) + len(ACCOUNTS)
 
+    @cached_property
+    def apart(self) -> NDArray[np.bool_]:
+        """False for a nuclide whose element is listed too, so that a sum counts nothing twice."""
+        parsed = [parse(s) for s in self.species]
+        whole = {s.symbol for s in parsed if s.is_element}
+        return np.array([s.is_element or s.symbol not in whole for s in parsed], dtype=bool)
+
     def account(self, name: str) -> int:
         """Position of rest_total, rest_net, ejected, remnant or wind."""
         return 2 * len(self.species) + ACCOUNTS.index(name)
@@ -65,6 +76,10 @@ class Track:
         Set, metallicity and mass of each published model that the curve's `share` counts.
     followed : ndarray of bool, shape (species,)
         False where some set of the entry doesn't follow a species.
+    cover : ndarray, shape (species,)
+        Share of a species' mass at birth that is in nuclides the entry follows.
+    elements : frozenset of str
+        Elements of which every set of the entry follows anything.
     notes : tuple of str
     """
 
@@ -73,6 +88,8 @@ class Track:
     imploded: Curve
     models: tuple[tuple[str, float, float], ...]
     followed: NDArray[np.bool_]
+    cover: Array
+    elements: frozenset[str]
     notes: tuple[str, ...]
 
 
@@ -147,11 +164,9 @@ def strands(
         primary = "net" if "total" in grid.derived else "total"
         for position, weight in zip(at.slices, at.weights, strict=True):
             one = grid.slices[position]
-            shown = _without_wind(one) if winds == "rest" else one
-            curve = slice_curve(shown, projection, method, primary)
-            out.append(
-                Strand(grid, position, share * weight, curve, slice_curve(_imploded(one), projection, method))
-            )
+            curve = slice_curve(one, projection, method, primary, winds)
+            imploded = imploded_curve(one, projection, method, winds)
+            out.append(Strand(grid, position, share * weight, curve, imploded))
         notes += [n for n in (at.note, *grid.notes) if n]
     if winds == "rest":
         notes = [n for n in notes if not n.endswith("returned at birth composition")]
@@ -187,25 +202,31 @@ def braid(name: str, parts: Sequence[Strand], species: Sequence[str], notes: Seq
             f"{error.what} at Z = {at}", where=name, mend="choose another metallicity or another set"
         ) from None
     models = [(p.grid.id, p.grid.slices[p.position]) for p in parts]
+    grids = list(dict.fromkeys(p.grid for p in parts))
     return Track(
         name,
         curve,
         blend([p.imploded for p in parts], weights),
         tuple((id, one.metallicity, float(m)) for id, one in models for m in one.mass),
-        np.all([p.grid.projection(species)[1] for p in parts], axis=0),
+        np.all([g.projection(species)[1] for g in grids], axis=0),
+        np.min([_cover(g, species) for g in grids], axis=0),
+        frozenset.intersection(*(frozenset(s.symbol for s in g.parsed) for g in grids)),
         tuple(notes),
     )
 
 
-def _without_wind(one: Slice) -> Slice:
-    """A slice whose unlisted wind belongs to no species."""
-    return replace(one, total=one.listed)
-
-
-def _imploded(one: Slice) -> Slice:
-    """A slice whose stars eject nothing but their wind."""
-    lost = one.wind[:, None] * one.initial
-    return replace(one, ejected=one.wind, total=lost, net=np.zeros_like(lost))
+def _cover(grid: YieldSet, species: Sequence[str]) -> Array:
+    """Share of each species' mass at birth that is in nuclides a set follows."""
+    out = np.zeros(len(species))
+    for i, text in enumerate(species):
+        one = parse(text)
+        if one in grid.parsed:
+            out[i] = 1.0
+        elif one.is_element:
+            natural = birth_composition([n.name for n in isotopes(one.symbol)], 0.01, DEFAULT_SOLAR)
+            has = np.array([n in grid.parsed for n in isotopes(one.symbol)], dtype=bool)
+            out[i] = natural[has].sum() / natural.sum() if natural.any() else 0.0
+    return out
 
 
 def event_row(grid: YieldSet, species: Sequence[str], birth: Array) -> tuple[Array, NDArray[np.bool_]]:
@@ -235,7 +256,7 @@ def event_row(grid: YieldSet, species: Sequence[str], birth: Array) -> tuple[Arr
     projection, followed = grid.projection(species)
     mass = float(one.ejected[0])
     total = one.total[0] @ projection
-    net = np.where(followed, total - mass * birth, 0.0)
-    rest = mass - float(one.total[0].sum())
-    accounts = [rest, -float(net.sum()), mass, -mass, 0.0]
+    net = np.where(followed, total - mass * birth * _cover(grid, species), 0.0)
+    apart = Columns(tuple(species)).apart
+    accounts = [mass - float(total[apart].sum()), -float(net[apart].sum()), mass, -mass, 0.0]
     return np.concatenate([total, net, accounts]), followed

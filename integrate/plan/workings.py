@@ -49,6 +49,11 @@ class Workings:
                 'metallicity can\'t be free with lifetimes = "sets"',
                 mend="choose a law, such as portinari-1998, or fix the metallicity",
             )
+        if population.laws and "metallicity" in free:
+            raise InputError(
+                f"metallicity can't be free where {', '.join(population.laws)} depends on it by a law",
+                mend="fix the metallicity, or give plain numbers in place of the law",
+            )
         self.population = population
         self.convention = convention
         self.by_source = by_source
