@@ -1,4 +1,4 @@
-"""The shipped yield sets: finding them and checking their figures."""
+"""The yield sets there are, shipped and admitted: finding them and checking their figures."""
 
 from __future__ import annotations
 
@@ -15,6 +15,7 @@ from typing import Any
 
 import numpy as np
 
+from . import store
 from .build import Printed, build
 from .errors import InputError, nearest
 from .grid import Slice, YieldSet
@@ -25,20 +26,32 @@ KINDS = ("agb", "core-collapse", "thermonuclear")
 DEFAULT_SOLAR = "asplund-2009"
 
 
-@lru_cache(maxsize=1)
 def catalogue() -> Mapping[str, tuple[str, str]]:
-    """Return every shipped yield set.
+    """Return every yield set there is: the shipped ones, and those in the user's library.
 
     Returns
     -------
     mapping
-        From the set's id to its folder and the variant it selects there.
+        From the set's id to its folder and the variant it selects there; for an admitted
+        set, to its file and nothing.
+
+    Warns
+    -----
+    LibraryWarning
+        For every file of the library that can't be used.
 
     Examples
     --------
     >>> catalogue()["karakas-2010"]
     ('karakas-2010', 'VW93')
     """
+    own = {e.id: (str(e.path), "") for e in store.entries() if e.id not in _catalogue()}
+    return dict(sorted({**_catalogue(), **own}.items()))
+
+
+@lru_cache(maxsize=1)
+def _catalogue() -> Mapping[str, tuple[str, str]]:
+    """Every shipped yield set."""
     found: dict[str, tuple[str, str]] = {}
     for folder in sorted(files("steelyard.tables").iterdir(), key=lambda f: f.name):
         if not folder.joinpath("set.toml").is_file():
@@ -63,17 +76,59 @@ def shipped() -> tuple[str, ...]:
     >>> "kobayashi-2006" in shipped()
     True
     """
-    return tuple(catalogue())
+    return tuple(_catalogue())
 
 
-@lru_cache(maxsize=128)
+def printed(id: str) -> tuple[Mapping[str, Any], Printed]:
+    """Return the figures of a set as its paper prints them, before they are laid on the grid.
+
+    Parameters
+    ----------
+    id : str
+        Author-year and variant, one of `catalogue()`.
+
+    Returns
+    -------
+    info : mapping
+        What its set.toml says.
+    figures : Printed
+        Of its own models only, where the set continues another upwards.
+
+    Raises
+    ------
+    InputError
+        No such set, or its figures don't match their checksum.
+
+    Examples
+    --------
+    >>> info, figures = printed("kobayashi-2006")
+    >>> info["ejected"], figures.models[0]["remnant"]
+    ('mass - remnant', '1.57E+00')
+    """
+    if id in _catalogue():
+        return _printed(id)
+    if store.holds(id):
+        return store.printed(id)
+    raise InputError(f"yield set {id!r} isn't known", mend=nearest(id, catalogue()))
+
+
+def _printed(id: str) -> tuple[Mapping[str, Any], Printed]:
+    name, variant = _catalogue()[id]
+    folder = files("steelyard.tables").joinpath(name)
+    info = _info(folder)
+    texts = {csv_name: _text(folder, csv_name, digest) for csv_name, digest in info["checksums"].items()}
+    rows = {csv_name: _select(_rows(text), variant) for csv_name, text in texts.items()}
+    yields = {c: rows[f"{c}.csv"] for c in ("total", "net") if f"{c}.csv" in rows}
+    return info, Printed(rows["models.csv"], yields, rows.get("initial.csv"))
+
+
 def load(id: str, solar: str = DEFAULT_SOLAR) -> YieldSet:
     """Load a yield set by its id.
 
     Parameters
     ----------
     id : str
-        Author-year and variant, one of `shipped()`.
+        Author-year and variant, one of `catalogue()`.
     solar : str
         Mixture for the birth composition where the set itself gives none.
 
@@ -91,20 +146,23 @@ def load(id: str, solar: str = DEFAULT_SOLAR) -> YieldSet:
     >>> load("nomoto-1997-w7").slices[0].ejected.round(3)
     array([1.374])
     """
-    if id not in catalogue():
-        raise InputError(f"yield set {id!r} isn't known", mend=nearest(id, catalogue()))
-    name, variant = catalogue()[id]
-    folder = files("steelyard.tables").joinpath(name)
-    info = _info(folder)
-    texts = {csv_name: _text(folder, csv_name, digest) for csv_name, digest in info["checksums"].items()}
-    rows = {csv_name: _select(_rows(text), variant) for csv_name, text in texts.items()}
-    yields = {c: rows[f"{c}.csv"] for c in ("total", "net") if f"{c}.csv" in rows}
-    printed = Printed(rows["models.csv"], yields, rows.get("initial.csv"))
+    if id in _catalogue():
+        return _load(id, solar)
+    if store.holds(id):
+        return store.load(id, solar)
+    raise InputError(f"yield set {id!r} isn't known", mend=nearest(id, catalogue()))
+
+
+@lru_cache(maxsize=128)
+def _load(id: str, solar: str) -> YieldSet:
+    """Load a shipped set; its figures don't change while a process runs."""
+    info, figures = _printed(id)
+    _, variant = _catalogue()[id]
     joined = "\n".join(f"{n} {d}" for n, d in sorted(info["checksums"].items()))
     checksum = hashlib.sha256(f"{joined}\n{variant}".encode()).hexdigest()
-    grid = build(id, info, printed, solar, checksum)
+    grid = build(id, info, figures, solar, checksum)
     if "continue" in info:
-        lower = load(info["continue"]["from"], solar)
+        lower = _load(info["continue"]["from"], solar)
         grid = _continue(grid, lower, float(info["continue"]["masses_up_to"]))
     return grid
 
