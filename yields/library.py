@@ -25,6 +25,9 @@ KINDS = ("agb", "core-collapse", "thermonuclear")
 
 DEFAULT_SOLAR = "asplund-2009"
 
+#: behind a set's id: the set after all its radioactive nuclides have decayed
+DECAYED = "@decayed"
+
 
 def catalogue() -> Mapping[str, tuple[str, str]]:
     """Return every yield set there is: the shipped ones, and those in the user's library.
@@ -128,7 +131,8 @@ def load(id: str, solar: str = DEFAULT_SOLAR) -> YieldSet:
     Parameters
     ----------
     id : str
-        Author-year and variant, one of `catalogue()`.
+        Author-year and variant, one of `catalogue()`; with ``@decayed`` behind it, the
+        set after all its radioactive nuclides have decayed.
     solar : str
         Mixture for the birth composition where the set itself gives none.
 
@@ -143,6 +147,8 @@ def load(id: str, solar: str = DEFAULT_SOLAR) -> YieldSet:
 
     Examples
     --------
+    >>> "Be7" in load("karakas-2010").species, "Be7" in load("karakas-2010@decayed").species
+    (True, False)
     >>> load("nomoto-1997-w7").slices[0].ejected.round(3)
     array([1.374])
     """
@@ -150,6 +156,10 @@ def load(id: str, solar: str = DEFAULT_SOLAR) -> YieldSet:
         return _load(id, solar)
     if store.holds(id):
         return store.load(id, solar)
+    if id.endswith(DECAYED):
+        from .decay import decayed
+
+        return replace(decayed(load(id.removesuffix(DECAYED), solar)), id=id)
     raise InputError(f"yield set {id!r} isn't known", mend=nearest(id, catalogue()))
 
 

@@ -181,3 +181,19 @@ def test_nan_in_a_table_is_refused_with_its_place(copy):
     about.write_text(about.read_text(encoding="utf-8").replace(old, new), encoding="utf-8")
     with pytest.raises(InputError, match=r"models.csv row 2 column ejected: 'nan' isn't a number"):
         load("marigo-2001")
+
+
+def test_a_set_is_had_after_its_decays():
+    """Be7 becomes Li7 (common practice: 53 days); what is ejected and left stays the same."""
+    raw, after = load("karakas-2010"), load("karakas-2010@decayed")
+    assert after.id == "karakas-2010@decayed" and after.checksum != raw.checksum
+    assert not {"Be7", "Al26", "Fe60", "Ni59"} & set(after.species)
+    a, b = raw.at(0.02), after.at(0.02)
+    li7 = a.net[:, raw.species.index("Li7")] + a.net[:, raw.species.index("Be7")]
+    np.testing.assert_allclose(b.net[:, after.species.index("Li7")], li7, rtol=1e-12)
+    np.testing.assert_array_equal(a.ejected, b.ejected)
+
+
+def test_decays_of_an_unknown_set_are_refused():
+    with pytest.raises(InputError, match="isn't known"):
+        load("karakas-2099@decayed")
