@@ -44,7 +44,7 @@ class Citation:
     --------
     >>> paper = Citation("Maoz D., Graur O.", 2017, "Star formation", "ApJ 848, 25")
     >>> paper.key, paper.label
-    ('Maoz2017ApJ848', 'Maoz & Graur (2017)')
+    ('Maoz2017ApJ848.25', 'Maoz & Graur (2017)')
     """
 
     authors: str
@@ -74,25 +74,27 @@ class Citation:
 
     @property
     def key(self) -> str:
-        """First author, year, journal and volume in letters and digits: the same in every population."""
+        """First author, year, journal, volume and page: the same in every population."""
         first = self.names[0][0] if self.names else "anonymous"
-        journal, volume, _ = self.journal
-        parts = (first, str(self.year), journal if volume else "", volume)
-        return "".join(re.sub(r"[^A-Za-z0-9]", "", part) for part in parts)
+        journal, volume, page = self.journal
+        parts = (first, str(self.year), journal, volume, page)
+        *known, at = (re.sub(r"[^A-Za-z0-9]", "", part) for part in parts)
+        return "".join(known) + (f".{at}" if at else "")
 
     @property
     def label(self) -> str:
         """Authors and year as in running text."""
-        surnames = [surname for surname, _ in self.names]
-        if len(surnames) > 2:
-            return f"{surnames[0]} et al. ({self.year})"
-        return f"{' & '.join(surnames)} ({self.year})"
+        return f"{self._surnames} ({self.year})"
 
     @property
     def line(self) -> str:
-        """Authors, year, journal and DOI on one line."""
-        doi = f", doi:{self.doi}" if self.doi else ""
-        return f"{self.authors} {self.year}, {self.reference}{doi}"
+        """Authors, year, journal, volume and page as in running text."""
+        return f"{self._surnames} ({self.year}, {self.reference})"
+
+    @property
+    def _surnames(self) -> str:
+        surnames = [surname for surname, _ in self.names]
+        return f"{surnames[0]} et al." if len(surnames) > 2 else " & ".join(surnames)
 
 
 def citations(population: Population) -> tuple[Citation, ...]:
@@ -112,7 +114,7 @@ def citations(population: Population) -> tuple[Citation, ...]:
     --------
     >>> from steelyard.integrate.popfile import default_population
     >>> [paper.key for paper in citations(default_population())][:3]
-    ['Kroupa2001MNRAS322', 'Karakas2010MNRAS403', 'Doherty2014MNRAS437']
+    ['Kroupa2001MNRAS322.231', 'Karakas2010MNRAS403.1413', 'Doherty2014MNRAS437.195']
     """
     found = [*of_imf(population)]
     for one in population.prepared.sets:
@@ -143,7 +145,7 @@ def of_delay(given: Delay) -> tuple[Citation, ...]:
 
 
 def of_lifetimes(population: Population) -> tuple[Citation, ...]:
-    """Return the paper of the lifetimes; of the law that stands in where sets give none, for the sets' own."""
+    """Return the paper of the lifetimes; for the sets' own, of the law where they give none."""
     given = population.lifetimes
     name = given if isinstance(given, str) else next((n for n, law in LAWS.items() if type(given) is law), "")
     if name in ("portinari-1998", "sets"):
@@ -183,4 +185,4 @@ def _shipped(*folder: str) -> tuple[Citation, ...]:
 def _citation(paper: Mapping[str, Any]) -> Citation:
     # papers of admitted sets say what their layout says
     text = {name: str(paper.get(name, "")) for name in ("authors", "title", "reference", "doi")}
-    return Citation(year=paper.get("year", ""), **text)
+    return Citation(year=int(paper.get("year", 0)), **text)

@@ -23,6 +23,7 @@ COMMANDS = {
     "weigh": "Weigh a population: yields by element, source and time.",
     "contrast": "Say how much of an answer is the choice of tables and laws.",
     "leverage": "Tell which models, masses and parameters a population's yields rest on.",
+    "typeset": "Make a paper's table of yields: LaTeX, machine-readable, CSV, with notes and BibTeX.",
     "scatter": "Draw populations star by star: how far chance moves what they eject.",
 }
 
