@@ -11,7 +11,7 @@ import os
 import secrets
 import zlib
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -68,8 +68,8 @@ class Ensemble:
     sources: tuple[str, ...]
     ages: Array
     digest: str
-    attributes: dict[str, Any]
-    offsets: dict[str, int]
+    attributes: dict[str, Any] = field(repr=False)
+    offsets: dict[str, int] = field(repr=False)
 
     @property
     def shape(self) -> tuple[int, ...]:
