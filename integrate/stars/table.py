@@ -31,7 +31,7 @@ Array = NDArray[np.float64]
 Whole = NDArray[np.int_]
 
 #: bytes of results that are worked on at once: they and the rows they are made of stay in cache
-WORKED_AT_ONCE = 2**23
+WORKED_AT_ONCE = 2**22
 
 #: particles under which work isn't shared among threads
 FEW = 50_000

@@ -363,7 +363,7 @@ def test_remnants_from_another_file(tmp_path):
 
 def test_two_blocks_of_one_model_are_refused_unless_told_apart(tmp_path):
     twice = DOHERTY + DOHERTY[: DOHERTY.index("\t")].replace("7.0M", "7.5M")
-    with pytest.raises(InputError, match="given twice for the model of 7.5 Msun.*variant"):
+    with pytest.raises(InputError, match=r"given twice for the model of 7.5 Msun.*variant"):
         read_sets([lay(tmp_path, twice)], "doherty-2014")
     one(lay(tmp_path, twice[: len(DOHERTY)] + twice[len(DOHERTY) :].replace("VW93", "B95")), "doherty-2014")
 

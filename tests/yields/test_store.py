@@ -125,7 +125,7 @@ def test_set_with_ids_that_cannot_be(tmp_path, reading):
 def test_replacing_needs_a_word_and_is_seen_at_once(tmp_path, reading):
     store.keep(reading)
     old = load("invented-2026")
-    with pytest.raises(InputError, match="in the library already.*--replace"):
+    with pytest.raises(InputError, match=r"in the library already.*--replace"):
         store.keep(reading)
     changed = make(tmp_path, TABLE.replace("1.5000E-03", "1.6000E-03"))
     store.keep(changed, replace=True)
