@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
-from functools import cached_property
+from functools import cached_property, lru_cache
 
 import numpy as np
 from numpy.typing import NDArray
@@ -14,7 +14,7 @@ from steelyard.yields.curve import ACCOUNTS, Curve, Method, blend, bracket, impl
 from steelyard.yields.errors import InputError
 from steelyard.yields.grid import YieldSet
 from steelyard.yields.library import DEFAULT_SOLAR
-from steelyard.yields.nuclides import isotopes, parse
+from steelyard.yields.nuclides import Species, isotopes, parse
 
 from .sources import Mixed
 
@@ -223,10 +223,18 @@ def _cover(grid: YieldSet, species: Sequence[str]) -> Array:
         if one in grid.parsed:
             out[i] = 1.0
         elif one.is_element:
-            natural = birth_composition([n.name for n in isotopes(one.symbol)], 0.01, DEFAULT_SOLAR)
-            has = np.array([n in grid.parsed for n in isotopes(one.symbol)], dtype=bool)
-            out[i] = natural[has].sum() / natural.sum() if natural.any() else 0.0
+            natural = _isotopes(one.symbol)
+            whole = sum(natural.values())
+            out[i] = sum(x for n, x in natural.items() if n in grid.parsed) / whole if whole else 0.0
     return out
+
+
+@lru_cache(maxsize=128)
+def _isotopes(symbol: str) -> dict[Species, float]:
+    """Mass fractions of an element's natural nuclides, in some matter of solar pattern."""
+    natural = isotopes(symbol)
+    amounts = birth_composition([n.name for n in natural], 0.01, DEFAULT_SOLAR)
+    return dict(zip(natural, amounts.tolist(), strict=True))
 
 
 def event_row(grid: YieldSet, species: Sequence[str], birth: Array) -> tuple[Array, NDArray[np.bool_]]:

@@ -30,7 +30,7 @@ from .lookup import Lookup, Metallicities
 Array = NDArray[np.float64]
 Whole = NDArray[np.int_]
 
-#: bytes of results that are worked on at once: they and the rows they are made of stay in cache
+#: bytes of results that are worked on at once: they stay in the cache that the cores share
 WORKED_AT_ONCE = 2**22
 
 #: particles under which work isn't shared among threads
