@@ -2,13 +2,16 @@
 
 from __future__ import annotations
 
+import warnings
 from typing import Any
 
 import typer
 
 from steelyard.scripts import terminal
-from steelyard.yields import YieldSet, load, shipped
+from steelyard.yields import YieldSet, load
 from steelyard.yields.errors import InputError, nearest
+from steelyard.yields.library import catalogue
+from steelyard.yields.store import LibraryWarning
 
 
 def command(
@@ -29,7 +32,11 @@ def command(
       steelyard sets --kind core-collapse
       steelyard sets --json
     """
-    grids = [load(one) for one in shipped()]
+    with warnings.catch_warnings(record=True) as caught:
+        warnings.simplefilter("always", LibraryWarning)
+        grids = [load(one) for one in catalogue()]
+    for one in caught:
+        terminal.complain(str(one.message))
     kinds = sorted({g.kind for g in grids})
     if kind and kind not in kinds:
         raise InputError(f"there are no sets of kind {kind!r}", where="--kind", mend=nearest(kind, kinds))
