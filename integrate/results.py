@@ -26,6 +26,9 @@ if TYPE_CHECKING:
 Array = NDArray[np.float64]
 Convention = Literal["total", "net"]
 
+#: elements that a notebook shows of many: one or two of every nucleosynthetic family
+_SHOWN = ("H", "He", "C", "N", "O", "Mg", "Si", "S", "Ca", "Mn", "Fe", "Ni", "Ba", "Eu")
+
 
 @dataclass(frozen=True, eq=False, repr=False)
 class PopulationYields:
@@ -74,6 +77,30 @@ class PopulationYields:
             f"PopulationYields(Z = {self.population.metallicity:g}, {len(self.ages)} ages,"
             f" {len(self.species)} species, sources {', '.join(self.sources)})"
         )
+
+    def _repr_html_(self) -> str:
+        from steelyard.yields.display import html_table
+
+        i = int(np.argmax(self.ages))
+        shown = [s for s in self.species if parse(s).symbol in _SHOWN] or list(self.species)
+        shown = shown[: len(_SHOWN)]
+        rows = []
+        for name in shown:
+            cells = []
+            for source in (*self.sources, None):
+                value = float(self.get(name, source)[i])
+                lacks = name in self.missing[source] if source else bool(self.lacking(name))
+                cells.append("-" if lacks and not value else f"{value:.3e}{'†' if lacks else ''}")
+            rows.append([name, *cells])
+        cells = [cell for row in rows for cell in row[1:]]
+        notes = [
+            "-: not followed" if "-" in cells else "",
+            "†: without what isn't followed" if any("†" in cell for cell in cells) else "",
+            f"{len(self.species) - len(shown)} more species" if len(shown) < len(self.species) else "",
+        ]
+        caption = f"Z = {self.population.metallicity:g}: total yields up to {self.ages[i]:.4g} yr"
+        headings = ["", *self.sources, "sum"]
+        return html_table(f"{caption}, Msun per Msun formed", headings, rows, "; ".join(filter(None, notes)))
 
     @cached_property
     def rates(self) -> Array:

@@ -24,6 +24,8 @@ COMMANDS = {
     "contrast": "Say how much of an answer is the choice of tables and laws.",
     "leverage": "Tell which models, masses and parameters a population's yields rest on.",
     "typeset": "Make a paper's table of yields: LaTeX, machine-readable, CSV, with notes and BibTeX.",
+    "handoff": "Write yields over metallicity and age to a file for another code.",
+    "report": "Make one HTML page that tells all of a population.",
     "scatter": "Draw populations star by star: how far chance moves what they eject.",
 }
 
@@ -48,6 +50,8 @@ class Commands(TyperGroup):
     def resolve_command(self, ctx: Any, args: list[str]) -> Any:
         name = args[0]
         if name not in COMMANDS:
+            if ctx.resilient_parsing:  # a shell asks what may follow
+                return None, None, args
             from steelyard.yields.errors import InputError, nearest
 
             raise InputError(f"there is no command {name!r}", mend=nearest(name, COMMANDS))
@@ -106,7 +110,6 @@ def _usage(error: Any) -> str:
 app = typer.Typer(
     cls=Commands,
     name="steelyard",
-    add_completion=False,
     rich_markup_mode=None,
     pretty_exceptions_enable=False,
     context_settings=SETTINGS,

@@ -212,6 +212,21 @@ class YieldSet:
         models = sum(len(s.mass) for s in self.slices)
         return f"YieldSet({self.id!r}, {self.kind}, {models} models, {len(self.species)} species)"
 
+    def _repr_html_(self) -> str:
+        from .display import html_table
+
+        derived = f"; {' and '.join(sorted(self.derived))} yields derived" if self.derived else ""
+        caption = f"{self.id}: {self.kind}, {len(self.species)} species{derived}"
+        if self.event:
+            # an event has no initial mass
+            (one,) = self.slices
+            return html_table(caption, ["", "ejected (Msun)"], [["event", f"{one.ejected[0]:g}"]])
+        rows = [
+            [f"{one.metallicity:g}", f"{len(one.mass)}", f"{one.mass[0]:g}", f"{one.mass[-1]:g}"]
+            for one in self.slices
+        ]
+        return html_table(caption, ["Z", "models", "from (Msun)", "to (Msun)"], rows)
+
     @property
     def metallicities(self) -> tuple[float, ...]:
         """Metallicities of the slices, increasing."""

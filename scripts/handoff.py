@@ -1,0 +1,79 @@
+"""`steelyard handoff`: yields over metallicity and age, in a file for another code."""
+
+from __future__ import annotations
+
+from dataclasses import replace
+from pathlib import Path
+from typing import Any
+
+import typer
+
+from steelyard.integrate.popfile import default_population, read_population, told
+from steelyard.integrate.population import read_ages
+from steelyard.scripts import terminal
+from steelyard.yields.errors import InputError, nearest
+from steelyard.yields.nuclides import parse
+from steelyard.yields.units import plain
+
+FORMATS = ("hdf5", "fits", "votable", "ecsv", "csv")
+
+
+def command(
+    file: str = typer.Argument(
+        "",
+        metavar="FILE",
+        help="Population file (TOML). Default: that of `steelyard weigh --template`.",
+        show_default=False,
+    ),
+    lowest: str = typer.Option("1e-4", "--from", metavar="Z", help="Lowest metallicity; nodes are chosen."),
+    highest: str = typer.Option("0.03", "--to", metavar="Z", help="Highest metallicity."),
+    metallicities: str = typer.Option("", metavar="LIST", help="Metallicities in place of chosen ones."),
+    ages: str = typer.Option("", metavar="LIST", help="Ages in place of chosen ones."),
+    error: float = typer.Option(1e-2, metavar="E", help="Bound on the error of linear interpolation."),
+    species: str = typer.Option(
+        "", metavar="LIST", help="elements, nuclides, or a list, in place of the file's."
+    ),
+    form: str = typer.Option("hdf5", "--format", metavar="|".join(FORMATS), help="Form of the file."),
+    output: str = typer.Option(..., "--output", "-o", metavar="FILE", help="File to write."),
+) -> None:
+    """Write yields over metallicity, age, source and species to a file for another code.
+
+    Metallicities and ages are chosen so that interpolation linear in log10 of both stays within the
+    error asked for; the file says so, with the largest error found between the nodes.
+
+    \b
+    Examples:
+      steelyard handoff --species O,Fe --error 0.05 -o yields.h5
+      steelyard handoff --metallicities 0.004,0.02 --ages "10 Myr, 1 Gyr" --format csv -o yields.csv
+    """
+    from steelyard.integrate.handoff import handoff, write_handoff, write_table
+
+    if form not in FORMATS:
+        raise InputError(f"format {form!r} isn't known", where="--format", mend=nearest(form, FORMATS))
+    population = read_population(file) if file else default_population()
+    if species in ("elements", "nuclides"):
+        population = replace(population, species=species)
+    elif species:
+        with told("--species"):
+            names = [parse(one).name for one in terminal.words(species, "--species")]
+            population = replace(population, species=names)
+    given: Any = None
+    if ages:
+        with told("--ages"):
+            given = read_ages(terminal.words(ages, "--ages"))
+    if metallicities:
+        zs = plain(terminal.words(metallicities, "--metallicities"), "", "--metallicities")
+    else:
+        zs = [plain(lowest, "", "--from"), plain(highest, "", "--to")]
+    with terminal.slow("weighing"):
+        made = handoff(population, zs, given, error, chosen=not metallicities)
+    with terminal.slow("writing"):
+        if form == "hdf5":
+            write_handoff(made, Path(output))
+        else:
+            write_table(made, Path(output), form)
+    print(
+        f"{len(made.results)} metallicities, {len(made.ages)} ages, {len(made.results[0].sources)} sources,"
+        f" {len(made.results[0].species)} species; error of interpolation {made.checked:.2e}"
+    )
+    print(f"written: {output}")
