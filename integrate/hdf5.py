@@ -274,7 +274,7 @@ def agrees(path: str | Path) -> tuple[bool, str]:
         again = population.weigh(stored.ages)
         fresh_arrays = _arrays(again)
         if "spread" in stored.attributes:
-            from .spreadfile import spread_from_dict
+            from .spread.file import spread_from_dict
 
             spread = spread_from_dict(tomllib.loads(stored.attributes["spread"]), "its spread")
             fresh_arrays |= _error_arrays(spread.propagate(again))

@@ -11,7 +11,7 @@ import numpy as np
 import typer
 
 from steelyard.integrate.leverage import BIRTH, Leverage, leverage
-from steelyard.integrate.leverage_text import sentence, to_dict, write_csv
+from steelyard.integrate.leverage.telling import sentence, to_dict, write_csv
 from steelyard.integrate.popfile import default_population, read_ages, read_population, told
 from steelyard.integrate.population import Population
 from steelyard.integrate.results import Convention

@@ -97,7 +97,7 @@ def _elements(text: str) -> list[str]:
 def _spread(name: str) -> Any:
     if name == ASSUMED:
         return None
-    from steelyard.integrate.spreadfile import read_spread
+    from steelyard.integrate.spread.file import read_spread
 
     return read_spread(name)
 

@@ -146,7 +146,7 @@ def _changed(population: Population, elements: str, ages: str) -> Population:
 
 def _errors(result: PopulationYields, spread: str) -> YieldErrors:
     from steelyard.integrate.spread import assumed
-    from steelyard.integrate.spreadfile import read_spread
+    from steelyard.integrate.spread.file import read_spread
 
     if spread == ASSUMED:
         return assumed(result.population).propagate(result)

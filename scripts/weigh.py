@@ -125,7 +125,7 @@ def command(
 
 def _errors(result: PopulationYields, spread: str) -> YieldErrors:
     from steelyard.integrate.spread import assumed
-    from steelyard.integrate.spreadfile import read_spread
+    from steelyard.integrate.spread.file import read_spread
 
     if spread == ASSUMED:
         return assumed(result.population).propagate(result)
@@ -198,7 +198,7 @@ def _write(
     write_hdf5(result, written[0], errors)
     write_csv(result, written[1])
     if errors is not None:
-        from steelyard.integrate.spreadfile import write_errors_csv
+        from steelyard.integrate.spread.file import write_errors_csv
 
         written.append(where / "yields-errors.csv")
         write_errors_csv(errors, written[-1])

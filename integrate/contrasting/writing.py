@@ -8,7 +8,7 @@ from importlib.metadata import version
 from pathlib import Path
 from typing import TYPE_CHECKING
 
-from ..poptext import population_to_toml
+from ..popfile.text import population_to_toml
 from ..provenance import replace_file, summary
 from .compare import Contrast
 from .telling import Row, rows

@@ -211,7 +211,7 @@ def _digest(plan: Plan) -> str:
     """SHA-256 of all that a plan's results follow from, but for functions, of which only names are known."""
     from importlib.metadata import version
 
-    from ..poptext import population_to_toml
+    from ..popfile.text import population_to_toml
 
     told = {
         "population": population_to_toml(plan.population),

@@ -16,8 +16,8 @@ from scipy.special import exprel
 
 from steelyard.yields.errors import InputError
 
-from ..delay_forms import ExponentialDelay, PowerLawDelay, log_ratio
 from ..delays import Delay
+from ..delays.forms import ExponentialDelay, PowerLawDelay, log_ratio
 from .special import exprel_slope
 
 Array = NDArray[np.float64]

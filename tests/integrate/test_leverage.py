@@ -10,9 +10,9 @@ from scipy.interpolate import PchipInterpolator
 from steelyard.integrate import DelayedSource, Edges, Join, Plan, Population, StellarSource, imf
 from steelyard.integrate.figures.leverage import contribution_by_mass
 from steelyard.integrate.leverage import leverage
-from steelyard.integrate.leverage_text import sentence, to_dict, write_csv
-from steelyard.integrate.monotone import monotone_slopes
-from steelyard.integrate.nodes import nodes
+from steelyard.integrate.leverage.monotone import monotone_slopes
+from steelyard.integrate.leverage.nodes import nodes
+from steelyard.integrate.leverage.telling import sentence, to_dict, write_csv
 from steelyard.yields import load
 from steelyard.yields.errors import InputError
 from steelyard.yields.grid import Slice, YieldSet

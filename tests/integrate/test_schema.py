@@ -10,7 +10,7 @@ import pytest
 
 from steelyard.integrate import popfile
 from steelyard.integrate.popfile import population_from_dict, population_to_toml, template
-from steelyard.integrate.schema import population_schema
+from steelyard.integrate.popfile.schema import population_schema
 from steelyard.yields.errors import InputError
 
 jsonschema = pytest.importorskip("jsonschema")
@@ -126,7 +126,10 @@ def test_explains_keys_in_the_words_of_the_template():
 
 def test_is_printed_and_named_in_a_comment():
     out = subprocess.run(
-        [sys.executable, "-m", "steelyard.integrate.schema"], capture_output=True, text=True, check=True
+        [sys.executable, "-m", "steelyard.integrate.popfile.schema"],
+        capture_output=True,
+        text=True,
+        check=True,
     )
     assert json.loads(out.stdout) == population_schema()
     # the line that names a schema is a comment to TOML

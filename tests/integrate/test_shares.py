@@ -12,7 +12,7 @@ from steelyard.integrate.contrasting.writing import write_csv
 from steelyard.integrate.figures import save
 from steelyard.integrate.figures.shares import stacked_shares
 from steelyard.integrate.shares import shares
-from steelyard.integrate.sobol import sobol
+from steelyard.integrate.shares.sobol import sobol
 from steelyard.yields.errors import InputError
 
 LIMONGI = [f"limongi-chieffi-2018-{s}-v{v}" for s in "MR" for v in ("000", "150", "300")]

@@ -8,10 +8,10 @@ import pytest
 
 from steelyard.integrate import DelayedSource, Join, Population, StellarSource, imf
 from steelyard.integrate.files import agrees, read_hdf5, write_hdf5
-from steelyard.integrate.nodes import nodes
+from steelyard.integrate.leverage.nodes import nodes
 from steelyard.integrate.spread import Spread, assumed
-from steelyard.integrate.spreadfile import read_spread, spread_from_dict, write_errors_csv
-from steelyard.integrate.stated_error import StatedError
+from steelyard.integrate.spread.file import read_spread, spread_from_dict, write_errors_csv
+from steelyard.integrate.spread.stated import StatedError
 from steelyard.yields import load
 from steelyard.yields.errors import InputError
 from steelyard.yields.grid import Slice, YieldSet

@@ -16,7 +16,7 @@ from steelyard.integrate.reporting import report, to_html, write_html
 from steelyard.integrate.reporting.choices import USUAL, usual_swaps
 from steelyard.integrate.reporting.gathering import CHOICE
 from steelyard.integrate.spread import Spread
-from steelyard.integrate.stated_error import StatedError
+from steelyard.integrate.spread.stated import StatedError
 from steelyard.yields.errors import InputError
 
 VOID = {"meta", "link"}

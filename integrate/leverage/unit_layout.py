@@ -10,11 +10,11 @@ from numpy.typing import NDArray
 
 from steelyard.yields.curve import Curve
 
-from .population import Population
-from .ranges import Ground, spans
-from .sources import StellarSource
-from .tracks import Columns, Strand, braid
-from .weights import Segments, segments
+from ..population import Population
+from ..ranges import Ground, spans
+from ..sources import StellarSource
+from ..tracks import Columns, Strand, braid
+from ..weights import Segments, segments
 
 Array = NDArray[np.float64]
 

@@ -9,11 +9,11 @@ import numpy as np
 
 from steelyard.yields.errors import InputError
 
-from .imf import MassFunction, imf, kroupa_2001
-from .laws import PowerLawIMF, SlopeLaw, slope_law
-from .poptext import FUNCTION
-from .popvalues import as_list, as_number, as_numbers, as_table, as_word, require, short, told
-from .sources import FailureTable
+from ..imf import MassFunction, imf, kroupa_2001
+from ..laws import PowerLawIMF, SlopeLaw, slope_law
+from ..popvalues import as_list, as_number, as_numbers, as_table, as_word, require, short, told
+from ..sources import FailureTable
+from .text import FUNCTION
 
 
 def read_failures(value: Mapping[str, Any]) -> FailureTable:

@@ -13,7 +13,7 @@ from steelyard.yields.errors import InputError
 from steelyard.yields.nuclides import parse
 from steelyard.yields.units import plain
 
-from .nodes import Model
+from ..leverage.nodes import Model
 
 Array = NDArray[np.float64]
 

@@ -11,13 +11,13 @@ import tomli_w
 from steelyard.yields.grid import YieldSet
 from steelyard.yields.library import catalogue, load
 
-from .imf import CallableIMF
-from .laws import law_of, named
-from .lifetimes import LAWS
-from .sources import DelayedSource, Mixed, Source, StellarSource, set_id
+from ..imf import CallableIMF
+from ..laws import law_of, named
+from ..lifetimes import LAWS
+from ..sources import DelayedSource, Mixed, Source, StellarSource, set_id
 
 if TYPE_CHECKING:
-    from .population import Population
+    from ..population import Population
 
 #: stands for a choice that is left to the yield sets
 SETS = "sets"
@@ -42,7 +42,7 @@ def population_to_toml(population: Population) -> str:
 
     Examples
     --------
-    >>> from steelyard.integrate.popfile import default_population, population_from_dict
+    >>> from steelyard.integrate.popfile.reading import default_population, population_from_dict
     >>> import tomllib
     >>> population = default_population()
     >>> again = population_from_dict(tomllib.loads(population_to_toml(population)))

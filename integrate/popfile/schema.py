@@ -1,6 +1,6 @@
 """The JSON Schema of population files, by which editors complete keys and underline mistakes.
 
-``python -m steelyard.integrate.schema > population.schema.json`` writes it; a population file whose
+``python -m steelyard.integrate.popfile.schema > population.schema.json`` writes it; a population file whose
 first line is ``#:schema ./population.schema.json`` is then checked by editors that read that line.
 Choices, keys and explanations are those of the reader and of the template; what only the reader can
 know, such as units and whether sets meet, it alone checks.
@@ -16,13 +16,13 @@ from typing import Any
 from steelyard.yields.composition import mixtures
 from steelyard.yields.library import shipped
 
-from . import popfile
-from .delays import FORMS as DELAY_FORMS
-from .delays import PRESETS
-from .imf import FORMS as IMF_FORMS
-from .lifetimes import LAWS
-from .poptext import FUNCTION, SETS
-from .sources import EDGE_ABOVE, EDGE_BELOW, JOIN_POLICIES, REMNANTS, STELLAR_KINDS
+from ..delays import FORMS as DELAY_FORMS
+from ..delays import PRESETS
+from ..imf import FORMS as IMF_FORMS
+from ..lifetimes import LAWS
+from ..sources import EDGE_ABOVE, EDGE_BELOW, JOIN_POLICIES, REMNANTS, STELLAR_KINDS
+from .reading import MOST_AGES, template
+from .text import FUNCTION, SETS
 
 DIALECT = "https://json-schema.org/draft/2020-12/schema"
 
@@ -41,7 +41,7 @@ def population_schema() -> Schema:
     >>> sorted(population_schema()["required"])
     ['metallicity', 'source']
     """
-    told = _explanations(popfile.template())
+    told = _explanations(template())
     stellar = {"sets": _several(_entry()), "limits": {"anyOf": [{"const": SETS}, _pair()]}}
     stellar["winds"] = _one_of(("birth", "rest"))
     collapse = {
@@ -126,7 +126,7 @@ def _table(*keys: str) -> Schema:
 
 
 def _ages() -> Schema:
-    steps = {"type": "integer", "minimum": 2, "maximum": popfile.MOST_AGES}
+    steps = {"type": "integer", "minimum": 2, "maximum": MOST_AGES}
     made = _table("from", "to", "steps")
     return {**made, "properties": {"from": _AMOUNT, "to": _AMOUNT, "steps": steps}}
 

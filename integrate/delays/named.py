@@ -14,7 +14,7 @@ import numpy as np
 
 from steelyard.yields.errors import InputError, nearest
 
-from .delay_forms import (
+from .forms import (
     BrokenPowerLawDelay,
     Delay,
     ExponentialDelay,

@@ -12,11 +12,11 @@ from numpy.typing import NDArray
 
 from steelyard.yields.errors import InputError
 
+from ..population import Population
+from ..results import Convention, PopulationYields
+from ..sources import StellarSource, set_id
+from ..weights import dead_weights, dying_basis
 from .nodes import Model, Nodes, Parts, nodes, positions
-from .population import Population
-from .results import Convention, PopulationYields
-from .sources import StellarSource, set_id
-from .weights import dead_weights, dying_basis
 
 Array = NDArray[np.float64]
 
@@ -269,7 +269,7 @@ class Leverage:
         of the total and of the net yields, shape (t, species), in closed form. Parameters without
         one are left out; there are none where the mass function is a function of the user's.
         """
-        from .plan import Plan, candidates
+        from ..plan import Plan, candidates
 
         population = self.population
         names = candidates(population)

@@ -10,10 +10,10 @@ from typing import Any
 
 import numpy as np
 
-from .leverage import BIRTH, Contributor, Leverage, share_of
+from ..provenance import provenance, replace_file
+from ..results import Convention
 from .nodes import positions
-from .provenance import provenance, replace_file
-from .results import Convention
+from .ranking import BIRTH, Contributor, Leverage, share_of
 
 
 def sentence(found: Leverage, species: str, age: int = -1, convention: Convention = "total") -> str:
@@ -22,7 +22,7 @@ def sentence(found: Leverage, species: str, age: int = -1, convention: Conventio
     Examples
     --------
     >>> from steelyard.integrate import Population, StellarSource
-    >>> from steelyard.integrate.leverage import leverage
+    >>> from steelyard.integrate.leverage.ranking import leverage
     >>> stars = Population(0.02, [StellarSource("core-collapse", ["kobayashi-2006"])], species=["O"])
     >>> print(sentence(leverage(stars, ["1 Gyr"]), "O"))
     If the model of 40 Msun at Z = 0.02 of kobayashi-2006 is wrong by a factor of 2 in O, the total yield

@@ -19,14 +19,12 @@ from steelyard.yields.errors import InputError, nearest
 from steelyard.yields.library import DEFAULT_SOLAR, catalogue
 from steelyard.yields.nuclides import parse
 
-from .laws import number_law
-from .lifetimes import LAWS
-from .popforms import read_delay, read_failures, read_imf, read_mixture
-from .poptext import FUNCTION, SETS, population_to_toml
-from .population import DEFAULT_AGES, Population
-from .population import read_ages as checked
-from .popvalues import as_list, as_number, as_numbers, as_table, as_tables, as_word, require, short, told
-from .sources import (
+from ..laws import number_law
+from ..lifetimes import LAWS
+from ..population import DEFAULT_AGES, Population
+from ..population import read_ages as checked
+from ..popvalues import as_list, as_number, as_numbers, as_table, as_tables, as_word, require, short, told
+from ..sources import (
     REMNANTS,
     STELLAR_KINDS,
     DelayedSource,
@@ -35,6 +33,8 @@ from .sources import (
     Source,
     StellarSource,
 )
+from .forms import read_delay, read_failures, read_imf, read_mixture
+from .text import FUNCTION, SETS, population_to_toml
 
 __all__ = [
     "default_population",
@@ -116,7 +116,7 @@ def template() -> str:
     >>> print(template().splitlines()[0])
     # A population for `steelyard weigh`: stars born together, and the events that follow from them.
     """
-    return files("steelyard.integrate").joinpath("population.toml").read_text(encoding="utf-8")
+    return files("steelyard.integrate.popfile").joinpath("population.toml").read_text(encoding="utf-8")
 
 
 def population_from_dict(data: Mapping[str, Any], where: str = "population") -> Population:

@@ -34,10 +34,10 @@ from numpy.typing import NDArray
 from steelyard.yields.errors import InputError, nearest
 from steelyard.yields.nuclides import parse
 
-from .nodes import nodes, positions
-from .population import Population
-from .results import Convention, PopulationYields
-from .stated_error import StatedError
+from ..leverage.nodes import nodes, positions
+from ..population import Population
+from ..results import Convention, PopulationYields
+from .stated import StatedError
 
 Array = NDArray[np.float64]
 

@@ -28,12 +28,12 @@ from numpy.typing import NDArray
 from steelyard.yields.errors import InputError, nearest
 from steelyard.yields.nuclides import parse
 
+from ..population import Population, read_ages
+from ..sources import DelayedSource, StellarSource
+from ..tracks import Strand, event_row, strands
+from ..weights import Segments, dead_weights, dying_basis
 from .monotone import monotone_slopes
-from .population import Population, read_ages
-from .sources import DelayedSource, StellarSource
-from .tracks import Strand, event_row, strands
 from .unit_layout import unit_layout
-from .weights import Segments, dead_weights, dying_basis
 
 Array = NDArray[np.float64]
 

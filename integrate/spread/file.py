@@ -11,10 +11,10 @@ from typing import Any
 
 from steelyard.yields.errors import InputError
 
-from .popvalues import as_list, as_number, as_table, as_tables, as_word, require, short, told
-from .provenance import provenance, replace_file
-from .spread import Spread, YieldErrors
-from .stated_error import StatedError
+from ..popvalues import as_list, as_number, as_table, as_tables, as_word, require, short, told
+from ..provenance import provenance, replace_file
+from .propagation import Spread, YieldErrors
+from .stated import StatedError
 
 _KEYS = ("set", "source", "elements", "sigma", "correlation_length", "common", "between")
 

@@ -20,10 +20,10 @@ from numpy.typing import NDArray
 
 from steelyard.yields.errors import InputError, nearest
 
-from .contrasting import MOST, Contrast, Design, contrast
-from .contrasting.compare import OVER
-from .contrasting.variance import decompose, decompose_sample
-from .results import Convention
+from ..contrasting import MOST, Contrast, Design, contrast
+from ..contrasting.compare import OVER
+from ..contrasting.variance import decompose, decompose_sample
+from ..results import Convention
 
 Array = NDArray[np.float64]
 

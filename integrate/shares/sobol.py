@@ -15,8 +15,8 @@ from steelyard.yields.composition import abundance_ratio
 from steelyard.yields.errors import InputError
 from steelyard.yields.units import plain
 
-from .plan import Plan
-from .population import Population
+from ..plan import Plan
+from ..population import Population
 
 Array = NDArray[np.float64]
 Of = Literal["yield", "log", "ratio"]

@@ -1,0 +1,21 @@
+"""The population file: TOML read into a `Population`, strictly, and written again."""
+
+from .reading import (
+    default_population,
+    population_from_dict,
+    population_to_toml,
+    read_ages,
+    read_population,
+    template,
+    told,
+)
+
+__all__ = [
+    "default_population",
+    "population_from_dict",
+    "population_to_toml",
+    "read_ages",
+    "read_population",
+    "template",
+    "told",
+]
