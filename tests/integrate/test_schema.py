@@ -8,8 +8,13 @@ import tomllib
 
 import pytest
 
-from steelyard.integrate import popfile
-from steelyard.integrate.popfile import population_from_dict, population_to_toml, template
+from steelyard.integrate.popfile import (
+    default_population,
+    population_from_dict,
+    population_to_toml,
+    reading,
+    template,
+)
 from steelyard.integrate.popfile.schema import population_schema
 from steelyard.yields.errors import InputError
 
@@ -89,7 +94,7 @@ BAD = [
 
 
 def test_takes_what_the_reader_writes(validator):
-    for text in (template(), population_to_toml(popfile.default_population())):
+    for text in (template(), population_to_toml(default_population())):
         validator.validate(tomllib.loads(text))
 
 
@@ -110,11 +115,11 @@ def test_refuses_with_the_reader(validator, path, value):
 
 def test_has_the_keys_of_the_reader():
     made = population_schema()
-    assert set(made["properties"]) == set(popfile._TOP)
+    assert set(made["properties"]) == set(reading._TOP)
     source = made["properties"]["source"]["items"]
-    assert set(source["then"]["properties"]) == set(popfile._AGB)
-    assert set(source["else"]["then"]["properties"]) == set(popfile._COLLAPSE)
-    assert set(source["else"]["else"]["properties"]) == set(popfile._DELAYED)
+    assert set(source["then"]["properties"]) == set(reading._AGB)
+    assert set(source["else"]["then"]["properties"]) == set(reading._COLLAPSE)
+    assert set(source["else"]["else"]["properties"]) == set(reading._DELAYED)
 
 
 def test_explains_keys_in_the_words_of_the_template():
@@ -134,4 +139,4 @@ def test_is_printed_and_named_in_a_comment():
     assert json.loads(out.stdout) == population_schema()
     # the line that names a schema is a comment to TOML
     hinted = f"#:schema ./population.schema.json\n{template()}"
-    assert population_from_dict(tomllib.loads(hinted)).ages == popfile.default_population().ages
+    assert population_from_dict(tomllib.loads(hinted)).ages == default_population().ages
