@@ -15,7 +15,7 @@ from steelyard.yields.errors import InputError, nearest
 from steelyard.yields.nuclides import parse
 from steelyard.yields.units import plain
 
-FORMATS = ("hdf5", "fits", "votable", "ecsv", "csv")
+FORMATS = ("hdf5", "netcdf", "fits", "votable", "ecsv", "csv")
 
 
 def command(
@@ -25,7 +25,9 @@ def command(
         help="Population file (TOML). Default: that of `steelyard weigh --template`.",
         show_default=False,
     ),
-    lowest: str = typer.Option("1e-4", "--from", metavar="Z", help="Lowest metallicity; nodes are chosen."),
+    lowest: str = typer.Option(
+        "1e-4", "--from", metavar="Z", help="Lowest metallicity, 0 too; nodes are chosen."
+    ),
     highest: str = typer.Option("0.03", "--to", metavar="Z", help="Highest metallicity."),
     metallicities: str = typer.Option("", metavar="LIST", help="Metallicities in place of chosen ones."),
     ages: str = typer.Option("", metavar="LIST", help="Ages in place of chosen ones."),
@@ -46,7 +48,7 @@ def command(
       steelyard handoff --species O,Fe --error 0.05 -o yields.h5
       steelyard handoff --metallicities 0.004,0.02 --ages "10 Myr, 1 Gyr" --format csv -o yields.csv
     """
-    from steelyard.integrate.handoff import handoff, write_handoff, write_table
+    from steelyard.integrate.handoff import handoff, write_handoff
 
     if form not in FORMATS:
         raise InputError(f"format {form!r} isn't known", where="--format", mend=nearest(form, FORMATS))
@@ -68,12 +70,11 @@ def command(
     with terminal.slow("weighing"):
         made = handoff(population, zs, given, error, chosen=not metallicities)
     with terminal.slow("writing"):
-        if form == "hdf5":
-            write_handoff(made, Path(output))
-        else:
-            write_table(made, Path(output), form)
+        write_handoff(made, Path(output), form)
     print(
         f"{len(made.results)} metallicities, {len(made.ages)} ages, {len(made.results[0].sources)} sources,"
         f" {len(made.results[0].species)} species; error of interpolation {made.checked:.2e}"
     )
-    print(f"written: {output}")
+    print(
+        f"written: {output}, {Path(output).stat().st_size / 1e6:.3g} MB; `steelyard weigh {output}` checks it"
+    )

@@ -270,9 +270,7 @@ def bracket(grid: YieldSet, metallicity: float, edge: str = "hold") -> Bracket:
                 mend='choose a metallicity inside, or edges.metallicity = "hold"',
             )
         i = 0 if metallicity < z[0] else len(z) - 1
-        note = (
-            f"{grid.id}: metallicity {metallicity:g} lies outside its models; the slice at {z[i]:g} is held"
-        )
+        note = f"{grid.id}: its models are of Z = {z[0]:g} to {z[-1]:g}; the slice at {z[i]:g} is held beyond"
         return Bracket((i,), (1.0,), note)
     i = int(np.searchsorted(z, metallicity))
     if z[i] == metallicity:

@@ -7,8 +7,6 @@ as finished only with the checksum of what it holds.
 
 from __future__ import annotations
 
-import os
-import secrets
 import zlib
 from collections.abc import Sequence
 from dataclasses import dataclass, field
@@ -21,7 +19,8 @@ from numpy.typing import NDArray
 from steelyard.yields.errors import InputError
 from steelyard.yields.units import plain
 
-from ..hdf5 import _attach, _fixed, _plain
+from ..files.labelled import Entry, attach, beside, label, put
+from ..files.labelled import plain as plain_value
 from ..provenance import attributes
 from .summary import Summary, summarise
 
@@ -32,6 +31,17 @@ Array = NDArray[np.float64]
 
 FORMAT = "steelyard ensemble"
 FORMAT_VERSION = 1
+
+#: the dimension scales of a file
+SCALES = {
+    "time": Entry(("time",), "yr", "age of the population"),
+    "species": Entry(("species",), "1", "elements such as C, nuclides such as C12"),
+    "parameter": Entry(("parameter",), "1", "free parameters; masses in Msun, times in yr"),
+    "source": Entry(("source",), "1", "who ejects"),
+}
+_THETA = Entry(("member", "parameter"), "1", "values of the free parameters")
+_CHECKSUM = Entry(("chunk",), "1", "CRC-32 of theta and yields of each chunk")
+_FINISHED = Entry(("chunk",), "1", "1 where a chunk is written")
 
 _MEND = "give a file that an ensemble was written to"
 
@@ -177,79 +187,36 @@ def create(path: Path, plan: Plan, members: int, chunk: int, digest: str) -> Non
     InputError
         The file can't be written.
     """
-    import h5py
-
     shape = (members, *plan.shape)
     chunks = -(-members // chunk)
-    scales = {
-        "time": (plan.ages, "yr", "age of the population"),
-        "species": (plan.species, "1", "elements such as C, nuclides such as C12"),
-        "parameter": (plan.free, "1", "free parameters; masses in Msun, times in yr"),
-    }
-    dims = ["member", "time", "species"]
+    scales: dict[str, Any] = {"time": plan.ages, "species": plan.species, "parameter": plan.free}
     if plan.by_source:
-        scales["source"] = (plan.sources, "1", "who ejects")
-        dims.insert(1, "source")
+        scales["source"] = plan.sources
+    dims = ("member", *(("source",) if plan.by_source else ()), "time", "species")
+    told = f"{plan.convention} yields up to an age, per Msun formed"
     room = {
-        "theta": (
-            (members, len(plan.free)),
-            "<f8",
-            ["member", "parameter"],
-            "1",
-            "values of the free parameters",
-        ),
-        "yields": (
-            shape,
-            "<f8",
-            dims,
-            "Msun/Msun",
-            f"{plan.convention} yields up to an age, per Msun formed",
-        ),
-        "checksum": ((chunks,), "<u4", ["chunk"], "1", "CRC-32 of theta and yields of each chunk"),
-        "finished": ((chunks,), "u1", ["chunk"], "1", "1 where a chunk is written"),
+        "theta": ((members, len(plan.free)), "<f8", _THETA),
+        "yields": (shape, "<f8", Entry(dims, "Msun/Msun", told)),
+        "checksum": ((chunks,), "<u4", _CHECKSUM),
+        "finished": ((chunks,), "u1", _FINISHED),
     }
-    beside = path.with_name(f".{path.name[:100]}.{secrets.token_hex(6)}.part")
-    try:
-        try:
-            with h5py.File(beside, "w", libver=("v108", "v108")) as file:
-                for name, value in attributes(plan.population.weigh(plan.ages)).items():
-                    _attach(file, name, value)
-                for name, value in (
-                    ("format", FORMAT),
-                    ("format_version", FORMAT_VERSION),
-                    ("convention", plan.convention),
-                    ("digest", digest),
-                    ("members", members),
-                    ("chunk", chunk),
-                ):
-                    _attach(file, name, value)
-                for name, (values, units, description) in scales.items():
-                    if not len(values):
-                        continue
-                    if isinstance(values, tuple):
-                        data, kind = _fixed(values)
-                        item = file.create_dataset(name, data=data, dtype=kind, track_times=False)
-                    else:
-                        item = file.create_dataset(name, data=values, track_times=False)
-                    _attach(item, "units", units)
-                    _attach(item, "description", description)
-                    item.make_scale(name)
-                file.create_dataset("at_start", data=plan(plan.start), track_times=False)
-                for name, (size, dtype, axes, units, description) in room.items():
-                    item = _room(file, name, size, dtype, zeroed=name == "finished")
-                    _attach(item, "units", units)
-                    _attach(item, "description", description)
-                    for axis, dim in enumerate(axes):
-                        item.dims[axis].label = dim
-                        if dim in file:
-                            item.dims[axis].attach_scale(file[dim])
-            os.replace(beside, path)
-        except BaseException:
-            beside.unlink(missing_ok=True)
-            raise
-    except OSError as error:
-        reason = os.strerror(error.errno) if error.errno else str(error)[:200]
-        raise InputError(f"can't be written: {reason}", where=str(path), mend="name another place") from None
+    with beside(path) as file:
+        origin = attributes(plan.population.weigh(plan.ages)) | {
+            "format": FORMAT,
+            "format_version": FORMAT_VERSION,
+            "convention": plan.convention,
+            "digest": digest,
+            "members": members,
+            "chunk": chunk,
+        }
+        for name, value in origin.items():
+            attach(file, name, value)
+        for name, values in scales.items():
+            if len(values):
+                put(file, name, values, SCALES[name])
+        file.create_dataset("at_start", data=plan(plan.start), track_times=False)
+        for name, (size, dtype, entry) in room.items():
+            label(_room(file, name, size, dtype, zeroed=name == "finished"), entry)
 
 
 def _room(file: Any, name: str, shape: tuple[int, ...], dtype: str, zeroed: bool) -> Any:
@@ -292,7 +259,7 @@ def _opened(path: Path) -> tuple[Ensemble, Array]:
         raise InputError("there is no such file", where=str(path), mend=_MEND)
     try:
         with h5py.File(path, "r") as file:
-            held = {name: _plain(value) for name, value in file.attrs.items()}
+            held = {name: plain_value(value) for name, value in file.attrs.items()}
             if held.pop("format", None) != FORMAT:
                 raise InputError("this HDF5 file holds no ensemble", where=str(path), mend=_MEND)
             version = held.pop("format_version")
@@ -303,7 +270,7 @@ def _opened(path: Path) -> tuple[Ensemble, Array]:
                     mend="read it with the version of steelyard that wrote it",
                 )
             names = {
-                name: _plain(file[name][()]) if name in file else ()
+                name: plain_value(file[name][()]) if name in file else ()
                 for name in ("parameter", "species", "source")
             }
             offsets = {

@@ -48,14 +48,14 @@ class Handoff:
     ----------
     results : tuple of PopulationYields
         One for each metallicity, at the same ages.
-    error : float
-        Bound asked for; NaN where both axes were given.
+    error : float or None
+        Bound asked for; None where an axis was given.
     checked : float
         Largest error measured between the nodes, in the same measure.
     """
 
     results: tuple[PopulationYields, ...]
-    error: float
+    error: float | None
     checked: float
 
     @property
@@ -71,14 +71,16 @@ class Handoff:
     @property
     def interpolation(self) -> str:
         """How the receiving code is to interpolate, and how well that does."""
+        first = self.metallicities[:2]
+        near_0 = f" (in metallicity itself between 0 and {first[1]:g})" if first[0] == 0 else ""
         return (
-            "cumulative quantities: linear in log10 of metallicity and in log10 of age; 0 ejected below the"
-            f" first age if that is {YOUNGEST:g} yr or less; error at most {self.checked:.2e} of the largest"
-            " value that source and quantity have at any age at that metallicity (net yields: of the larger"
-            " of total and net; mass of no species: of the mass ejected), measured at four places between"
-            f" any two nodes of each axis; not between metallicities {ASIDE:g} of their value apart, which"
-            " shut in jumps of the sets; rates are exact at the nodes, nothing is promised between:"
-            " difference cumulative quantities instead"
+            f"cumulative quantities: linear in log10 of metallicity{near_0} and in log10 of age; 0 ejected"
+            f" below the first age if that is {YOUNGEST:g} yr or less; error at most {self.checked:.2e} of"
+            " the largest value that source and quantity have at any age at that metallicity (net yields:"
+            " of the larger of total and net; mass of no species: of the mass ejected), measured at four"
+            " places between any two nodes of each axis; not between metallicities"
+            f" {ASIDE:g} of their value apart, which shut in jumps of the sets; rates are exact at the"
+            " nodes, nothing is promised between: difference cumulative quantities instead"
         )
 
 
@@ -96,7 +98,7 @@ def handoff(
     population : Population
         Its own metallicity and ages don't matter.
     metallicities : sequence of float
-        Lowest and highest, with nodes chosen between; or all nodes, where `chosen` is False.
+        Lowest (0 is one) and highest, with nodes chosen between; or all nodes, where `chosen` is False.
     ages : sequence, optional
         All nodes, yr; default: chosen between 1 Myr and the population's last.
     error : float
@@ -115,9 +117,9 @@ def handoff(
     Notes
     -----
     The error is that of cumulative yields and accounts interpolated linearly in log10 of
-    metallicity and of age, in units of the largest value that the source and quantity have at
-    any age at that metallicity; for net yields, of the larger of total and net; for mass of no
-    species, of the mass ejected.
+    metallicity (in metallicity itself next to 0) and of age, in units of the largest value that
+    the source and quantity have at any age at that metallicity; for net yields, of the larger
+    of total and net; for mass of no species, of the mass ejected.
 
     Where sets in series change the masses they serve, yields jump at the metallicity of a
     model. Such a jump is shut in between nodes a millionth of it apart, where no bound holds.
@@ -134,18 +136,21 @@ def handoff(
     if not 1e-4 <= error <= 0.3:
         raise InputError(f"error {error:g} isn't between 1e-4 and 0.3", mend="such as 1e-2")
     zs = sorted(set(np.atleast_1d(plain(metallicities, "", "metallicities")).tolist()))
-    if not zs or zs[0] <= 0 or zs[-1] >= 0.5 or (chosen and len(zs) != 2):
+    if not zs or zs[0] < 0 or zs[-1] >= 0.5:
+        raise InputError("metallicities are mass fractions of metals", mend="such as 1e-4 and 0.03")
+    if chosen and len(zs) > 2:
         raise InputError(
-            "metallicities needs mass fractions of metals above 0, as log10 is taken of them",
-            mend="such as 1e-4 and 0.03",
+            f"nodes are chosen between two metallicities, not {len(zs)}", mend="give the lowest and highest"
         )
     if len(zs) < 2:
         raise InputError("one metallicity is no grid", mend="give two or more, or use `steelyard weigh`")
-    draft = _Draft(population)
+    last = float(max(population.ages))
+    # ages are those of the grid
+    draft = _Draft(replace(population, ages=(last,)))
     if chosen:
         zs = draft.with_jumps(*zs)
     fixed = ages is not None
-    nodes = sorted(set(read_ages(ages))) if fixed else [YOUNGEST, float(max(population.ages))]
+    nodes = sorted(set(read_ages(ages))) if fixed else [YOUNGEST, last]
     if nodes[0] <= 0 or len(nodes) < 2 or nodes[0] >= nodes[-1]:
         raise InputError("ages needs two or more above 0", mend='such as ["1 Myr", "13.8 Gyr"]')
     place = SHARE * error
@@ -174,7 +179,7 @@ def handoff(
                 where="handoff",
                 mend="allow a larger error, or narrow the metallicities",
             )
-    given = float("nan") if fixed or not chosen else error
+    given = None if fixed or not chosen else error
     return Handoff(tuple(draft.at(z).weigh(nodes) for z in zs), given, float(checked))
 
 
@@ -187,8 +192,13 @@ def _is_wide(lo: float, hi: float) -> bool:
     return hi > lo * (1 + 3 * ASIDE)
 
 
+def _at(lo: float, hi: float, x: float) -> float:
+    """Return the place between two nodes: straight in log10, next to 0 straight."""
+    return float(lo * (hi / lo) ** x) if lo > 0 else x * hi
+
+
 def _halved(values: Sequence[float], bad: NDArray[np.bool_]) -> list[float]:
-    middles = [(a * b) ** 0.5 for (a, b), is_bad in zip(_pairs(values), bad, strict=True) if is_bad]
+    middles = [_at(a, b, 0.5) for (a, b), is_bad in zip(_pairs(values), bad, strict=True) if is_bad]
     return sorted([*values, *middles])
 
 
@@ -253,7 +263,7 @@ class _Draft:
         """Largest error at the nodes of age between two metallicities."""
         worst = 0.0
         for x in places:
-            z = float(lo * (hi / lo) ** x)
+            z = _at(lo, hi, x)
             off = np.abs(self._mixed(lo, hi, x, ages) - self._values(z, ages)) / self._scale(z, ages[-1])
             worst = max(worst, float(off.max()))
         return worst
@@ -262,6 +272,6 @@ class _Draft:
         """Largest error of interpolation in both, between two metallicities."""
         worst = 0.0
         for x in (0.0, *MEASURED, 1.0):
-            z = hi if x == 1.0 else float(lo * (hi / lo) ** x)
+            z = hi if x == 1.0 else _at(lo, hi, x)
             worst = max(worst, float(self._off(self._mixed(lo, hi, x, ages), z, ages, MEASURED).max()))
         return worst

@@ -83,6 +83,4 @@ def hold(law: str, value: float, low: float, high: float) -> tuple[float, tuple[
     held = min(max(value, low), high)
     if held == value:
         return held, ()
-    return held, (
-        f"{law} lifetimes cover Z = {low:g} to {high:g}; those of Z = {held:g} stand for Z = {value:g}",
-    )
+    return held, (f"{law} lifetimes cover Z = {low:g} to {high:g}; those of Z = {held:g} are held beyond",)

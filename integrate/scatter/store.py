@@ -4,16 +4,13 @@ from __future__ import annotations
 
 import csv
 import io
-import os
-import secrets
+from dataclasses import replace
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from steelyard.yields.errors import InputError
-
-from ..hdf5 import _attach, _fixed
+from ..files.labelled import Entry, attach, beside, put
 from ..provenance import attributes, provenance, replace_file
 from .result import LEVELS, ScatteredYields
 
@@ -27,28 +24,31 @@ FORMAT_VERSION = 1
 _CELL = ("population", "time", "source")
 _LAW = ("time", "species")
 
-#: dimensions, unit and description of each dataset
-DATASETS: dict[str, tuple[tuple[str, ...], str, str]] = {
-    "yields": ((*_CELL, "species"), "Msun", "{convention} yield of each population up to an age"),
-    "ejected": (_CELL, "Msun", "all mass ejected by each population up to an age, rest included"),
-    "remnants": (("population", "time"), "Msun", "mass in remnants"),
-    "living": (("population", "time"), "Msun", "mass in living stars"),
-    "events": (("population", "time", "event"), "1", "number of events up to an age"),
-    "born": (("population",), "Msun", "mass of the stars born; living + remnants + ejected = born"),
-    "stars": (("population",), "1", "number of the stars born"),
-    "followed": (
-        ("source", "species"),
-        "1",
-        "1 where the source follows the species; 0: missing, not zero",
+#: the dimension scales of a file
+SCALES = {
+    "time": Entry(("time",), "yr", "age of the population"),
+    "source": Entry(("source",), "1", "who ejects"),
+    "species": Entry(("species",), "1", "elements such as C, nuclides such as C12"),
+    "event": Entry(("event",), "1", "kind of event"),
+    "quantile": Entry(("quantile",), "1", "cumulative probability"),
+}
+
+#: the datasets of a file
+DATASETS = {
+    "yields": Entry((*_CELL, "species"), "Msun", "{convention} yield of each population up to an age"),
+    "ejected": Entry(_CELL, "Msun", "all mass ejected by each population up to an age, rest included"),
+    "remnants": Entry(_CELL[:2], "Msun", "mass in remnants"),
+    "living": Entry(_CELL[:2], "Msun", "mass in living stars"),
+    "events": Entry((*_CELL[:2], "event"), "1", "number of events up to an age"),
+    "born": Entry(_CELL[:1], "Msun", "mass of the stars born; living + remnants + ejected = born"),
+    "stars": Entry(_CELL[:1], "1", "number of the stars born"),
+    "followed": Entry(
+        ("source", "species"), "1", "1 where the source follows the species; 0: missing, not zero"
     ),
-    "mean": (_LAW, "Msun", "exact mean of the yields summed over sources"),
-    "covariance": (
-        ("time", "species", "species"),
-        "Msun2",
-        "exact covariance of the yields summed over sources",
-    ),
-    "skewness": (_LAW, "1", "exact skewness of the yields summed over sources"),
-    "quantiles": (("quantile", *_LAW), "Msun", "quantiles of the populations in this file"),
+    "mean": Entry(_LAW, "Msun", "exact mean of the yields summed over sources"),
+    "covariance": Entry((*_LAW, "species"), "Msun2", "exact covariance of the yields summed over sources"),
+    "skewness": Entry(_LAW, "1", "exact skewness of the yields summed over sources"),
+    "quantiles": Entry(("quantile", *_LAW), "Msun", "quantiles of the populations in this file"),
 }
 
 
@@ -83,60 +83,28 @@ def write_scatter(drawn: ScatteredYields, path: str | Path) -> None:
     ...         file["yields"].shape
     (20, 1, 1, 2)
     """
-    import h5py
-
-    try:
-        target = Path(os.path.realpath(path))
-        if target.exists() and not target.is_file():
-            raise InputError("can't be written: not an ordinary file", where=str(path), mend="name a file")
-        beside = target.with_name(f".{target.name[:100]}.{secrets.token_hex(6)}.part")
-        try:
-            # too large to be put together in memory as smaller results are
-            with h5py.File(beside, "w", libver=("v108", "v108")) as file:
-                _fill(file, drawn)
-            if target.exists():
-                beside.chmod(target.stat().st_mode & 0o777)
-            os.replace(beside, target)
-        except BaseException:
-            beside.unlink(missing_ok=True)
-            raise
-    except OSError as error:
-        reason = os.strerror(error.errno) if error.errno else str(error)[:200]
-        raise InputError(f"can't be written: {reason}", where=str(path), mend="name another place") from None
+    # too large to be put together in memory as smaller results are
+    with beside(path) as file:
+        _fill(file, drawn)
 
 
 def _fill(file: h5py.File, drawn: ScatteredYields) -> None:
     exact = drawn.population.weigh(drawn.ages)
     told = attributes(exact) | {"format": FORMAT, "notes": drawn.notes}
+    told |= {"format_version": FORMAT_VERSION, "mass": drawn.mass}
+    told |= {name: getattr(drawn, name) for name in ("mode", "convention", "count", "seed")}
     for name, value in told.items():
-        _attach(file, name, value)
-    for name, value in (
-        ("format_version", FORMAT_VERSION),
-        ("mode", drawn.mode),
-        ("convention", drawn.convention),
-        ("count", drawn.count),
-        ("seed", drawn.seed),
-    ):
-        _attach(file, name, value)
-    file.attrs["mass"] = drawn.mass
-    scales: dict[str, tuple[Any, str, str]] = {
-        "time": (drawn.ages, "yr", "age of the population"),
-        "source": (drawn.sources, "1", "who ejects"),
-        "species": (drawn.species, "1", "elements such as C, nuclides such as C12"),
-        "event": (drawn.event_kinds, "1", "kind of event"),
-        "quantile": (np.array(LEVELS), "1", "cumulative probability"),
+        attach(file, name, value)
+    scales = {
+        "time": drawn.ages,
+        "source": tuple(drawn.sources),
+        "species": tuple(drawn.species),
+        "event": tuple(drawn.event_kinds),
+        "quantile": np.array(LEVELS),
     }
-    for name, (values, units, description) in scales.items():
-        if not len(values):
-            continue
-        if isinstance(values, tuple):
-            data, kind = _fixed(values)
-            item = file.create_dataset(name, data=data, dtype=kind, track_times=False)
-        else:
-            item = file.create_dataset(name, data=values, track_times=False)
-        _attach(item, "units", units)
-        _attach(item, "description", description)
-        item.make_scale(name)
+    for name, values in scales.items():
+        if len(values):
+            put(file, name, values, SCALES[name])
     arrays: dict[str, Any] = {
         "yields": np.moveaxis(drawn.yields, 1, 2),
         "ejected": np.moveaxis(drawn.ejected, 1, 2),
@@ -151,23 +119,18 @@ def _fill(file: h5py.File, drawn: ScatteredYields) -> None:
         "skewness": drawn.law.skewness,
         "quantiles": drawn.quantiles(),
     }
-    for name, (dims, units, description) in DATASETS.items():
+    for name, entry in DATASETS.items():
         values = arrays[name]
         if values is None or not values.size:
             continue
         how: dict[str, Any] = {}
-        if dims[0] == "population" and values.ndim > 1:
+        if entry.dims[0] == "population" and values.ndim > 1:
             row = values[:1].size * values.itemsize
             block = max(1, min(len(values), 2**20 // row))
             how = {"chunks": (block, *values.shape[1:]), "compression": "gzip", "compression_opts": 1}
             how["shuffle"] = True
-        item = file.create_dataset(name, data=values, track_times=False, **how)
-        _attach(item, "units", units)
-        _attach(item, "description", description.format(convention=drawn.convention))
-        for axis, dim in enumerate(dims):
-            item.dims[axis].label = dim
-            if dim in file:
-                item.dims[axis].attach_scale(file[dim])
+        told_of = entry.description.format(convention=drawn.convention)
+        put(file, name, values, replace(entry, description=told_of), **how)
 
 
 def write_statistics(drawn: ScatteredYields, path: str | Path) -> None:

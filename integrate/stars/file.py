@@ -11,8 +11,7 @@ import numpy as np
 
 from steelyard.yields.errors import InputError
 
-from ..hdf5 import _attach, _plain
-from ..provenance import replace_file
+from ..files.labelled import attach, in_memory, plain
 from .table import Late, StarTable
 
 FORMAT = "steelyard star table"
@@ -45,29 +44,23 @@ _MEND = "give a file that a star table was saved to"
 
 def write_table(table: StarTable, path: str | Path) -> None:
     """Write a star table, see `StarTable.save`."""
-    import h5py
-
     arrays = _arrays(table)
-    with h5py.File("memory", "w", driver="core", backing_store=False, libver=("v108", "v108")) as file:
-        for name, value in table.attributes.items():
-            _attach(file, name, value)
-        _attach(file, "format", FORMAT)
-        _attach(file, "format_version", FORMAT_VERSION)
-        _attach(file, "convention", table.convention)
-        for name in _NUMBERS:
-            file.attrs[name] = getattr(table, name)
-        for name in _NAMES:
-            _attach(file, name, getattr(table, name))
+    told = table.attributes | {
+        "format": FORMAT,
+        "format_version": FORMAT_VERSION,
+        "convention": table.convention,
+        "late": tuple(table.late),
+        "checksum": _checksum(table, arrays),
+    }
+    told |= {name: getattr(table, name) for name in (*_NUMBERS, *_NAMES)}
+    with in_memory(path) as file:
+        for name, value in told.items():
+            attach(file, name, value)
         for name, values in arrays.items():
             unit, description = (LATE if "/" in name else DATASETS)[name.rpartition("/")[2]]
             dataset = file.create_dataset(name, data=values, track_times=False)
-            _attach(dataset, "units", unit)
-            _attach(dataset, "description", description)
-        _attach(file, "late", tuple(table.late))
-        _attach(file, "checksum", _checksum(table, arrays))
-        file.flush()
-        image = file.id.get_file_image()
-    replace_file(path, image)
+            attach(dataset, "units", unit)
+            attach(dataset, "description", description)
 
 
 def read_table(path: str | Path) -> StarTable:
@@ -79,7 +72,7 @@ def read_table(path: str | Path) -> StarTable:
         raise InputError("there is no such file", where=where, mend=_MEND)
     try:
         with h5py.File(path, "r") as file:
-            held = {name: _plain(value) for name, value in file.attrs.items()}
+            held = {name: plain(value) for name, value in file.attrs.items()}
             if held.get("format") != FORMAT:
                 raise InputError("this HDF5 file holds no star table", where=where, mend=_MEND)
             if held["format_version"] != FORMAT_VERSION:

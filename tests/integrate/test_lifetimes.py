@@ -175,7 +175,7 @@ def test_age_zero_has_killed_nothing():
 def test_metallicity_outside_the_law_is_held_and_noted():
     curve = lifetimes("portinari-1998").at(0.0)
     assert curve.lifetime(1.0) == 6.03e9  # the column Z = 0.0004
-    assert "those of Z = 0.0004 stand for Z = 0" in curve.notes[0]
+    assert "those of Z = 0.0004 are held beyond" in curve.notes[0]
     assert lifetimes("raiteri-1996").at(0.05).notes
     assert lifetimes("portinari-1998").at(0.02).notes == ()
 

@@ -53,7 +53,7 @@ def test_compiled_languages_read_it(file, tmp_path, compiler, suffix):
         (("--error", "2"), "isn't between"),
         (("--ages", "-1 Gyr"), "age is negative"),
         (("--metallicities", "0.02"), "no grid"),
-        (("--from", "0"), "above 0"),
+        (("--from", "-0.1"), "mass fractions"),
         (("nowhere.toml",), "there is no such file"),
     ],
 )

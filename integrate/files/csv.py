@@ -1,7 +1,4 @@
-"""A result on disk: HDF5 for other codes and for weighing again, CSV for people and spreadsheets.
-
-Every file carries the population that made it, and is replaced whole or not at all.
-"""
+"""A result as a tidy table in CSV, for people and spreadsheets."""
 
 from __future__ import annotations
 
@@ -11,21 +8,8 @@ from pathlib import Path
 
 import numpy as np
 
-from .hdf5 import StoredYields, agrees, read_hdf5, write_hdf5
-from .provenance import policies, provenance, replace_file, summary
-from .results import PopulationYields
-
-__all__ = [
-    "StoredYields",
-    "agrees",
-    "policies",
-    "provenance",
-    "read_hdf5",
-    "replace_file",
-    "summary",
-    "write_csv",
-    "write_hdf5",
-]
+from ..provenance import provenance, replace_file
+from ..results import PopulationYields
 
 
 def write_csv(result: PopulationYields, path: str | Path) -> None:
