@@ -1,6 +1,11 @@
 """A leaky box fed by a hand-off file: one zone of an invented dwarf galaxy; numpy and h5py only.
 
     python leaky_box.py yields.h5
+    python leaky_box.py yields.h5 scatter.h5
+
+The second line draws galaxies of few stars: every generation takes populations at random from a
+file of populations drawn star by star (`steelyard scatter --net`), so that the same history ends
+with a spread of metallicities.
 
 The galaxy and its numbers are invented. Gas flows in pristine, forms stars, and each source's
 ejecta leave with a factor of their own. Metallicity is the sum of the file's elements but H and
@@ -32,18 +37,43 @@ class Table:
 
     def at(self, metallicity):
         """Net yields and ejected mass by source at one metallicity: linear in log10 of it, ends held."""
-        log = np.log10(self.metallicity)
-        x = np.clip(np.log10(max(metallicity, 1e-30)), log[0], log[-1])
-        i = int(np.clip(np.searchsorted(log, x) - 1, 0, len(log) - 2))
-        w = (x - log[i]) / (log[i + 1] - log[i])
-        return tuple((1 - w) * self.data[n][i] + w * self.data[n][i + 1] for n in ("net", "ejected"))
+        nodes = self.metallicity
+        z = min(max(metallicity, nodes[0]), nodes[-1])
+        i = int(np.clip(np.searchsorted(nodes, z) - 1, 0, len(nodes) - 2))
+        lo, hi = nodes[i : i + 2]
+        # next to a metallicity of 0 straight in metallicity itself, as the file says
+        w = np.log(z / lo) / np.log(hi / lo) if lo > 0 else z / hi
+        return tuple((1 - w) * self.data[n][i] + w * self.data[n][i + 1] for n in NAMES)
 
-    def shares(self, age):
-        """Position and weight of ages on the nodes, linear in log10 of age; nothing before the first."""
-        log = np.log10(self.age)
-        x = np.clip(np.log10(np.maximum(age, 1e-30)), log[0], log[-1])
-        i = np.clip(np.searchsorted(log, x) - 1, 0, len(log) - 2)
-        return i, (x - log[i]) / (log[i + 1] - log[i]), age >= self.age[0]
+
+@dataclass
+class Chance:
+    """Populations drawn star by star: what each ejects more or less than their mean, Msun."""
+
+    mass: float
+    age: np.ndarray
+    net: np.ndarray  # population, time, source, species
+    ejected: np.ndarray  # population, time, source
+
+    def departure(self, stars, age, random):
+        """What a generation of this mass ejects more or less than its mean, per Msun formed, at ages."""
+        count = max(1, round(stars / self.mass))
+        drawn = random.integers(len(self.net), size=count)
+        i, w, on = shares(self.age, age)
+        found = []
+        for values in (self.net, self.ejected):
+            one = values[drawn].sum(axis=0).reshape(len(self.age), -1) / (count * self.mass)
+            one = ((1 - w)[:, None] * one[i] + w[:, None] * one[i + 1]) * on[:, None]
+            found.append(one.reshape(len(age), *values.shape[2:]))
+        return found
+
+
+def shares(nodes, age):
+    """Position and weight of ages on nodes, linear in log10 of age; nothing before the first."""
+    log = np.log10(nodes)
+    x = np.clip(np.log10(np.maximum(age, 1e-30)), log[0], log[-1])
+    i = np.clip(np.searchsorted(log, x) - 1, 0, len(log) - 2)
+    return i, (x - log[i]) / (log[i + 1] - log[i]), age >= nodes[0]
 
 
 def read(path):
@@ -52,6 +82,17 @@ def read(path):
         names = {k: [one.decode() for one in file[k][:]] for k in ("species", "source")}
         data = {k: file[k][:] for k in NAMES}
         return Table(file["metallicity"][:], file["time"][:], names["species"], names["source"], data)
+
+
+def read_chance(path, table):
+    """Read a file of populations drawn star by star; its species and sources are those of the table."""
+    with h5py.File(path, "r") as file:
+        species, sources = ([one.decode() for one in file[k][:]] for k in ("species", "source"))
+        if (species, sources) != (table.species, table.sources) or file.attrs["convention"] != b"net":
+            raise SystemExit(f"{path}: draw net yields of the same population and species")
+        net, ejected = file["yields"][:], file["ejected"][:]
+        means = net.mean(axis=0), ejected.mean(axis=0)
+        return Chance(float(file.attrs["mass"]), file["time"][:], net - means[0], ejected - means[1])
 
 
 @dataclass
@@ -67,8 +108,9 @@ class Galaxy:
     steps: int = 200
 
 
-def run(table, galaxy):
+def run(table, galaxy, chance=None, seed=0):
     """Follow the gas; returns masses by species over time and what went where."""
+    random = np.random.default_rng(seed)
     names = table.species
     count, dt = galaxy.steps, galaxy.until / galaxy.steps
     pristine = np.array([PRISTINE.get(s, 0.0) for s in names])
@@ -82,7 +124,7 @@ def run(table, galaxy):
         # what older generations eject during this step: unprocessed matter and net yields
         for k in range(step):
             net, ejected = tables[k]
-            i, w, on = table.shares(np.array([step - k - 1, step - k]) * dt)
+            i, w, on = shares(table.age, np.array([step - k - 1, step - k]) * dt)
             u = [
                 ((1 - w)[:, None] * v[i].reshape(2, -1) + w[:, None] * v[i + 1].reshape(2, -1)) * on[:, None]
                 for v in (net, ejected)
@@ -101,7 +143,9 @@ def run(table, galaxy):
         metals = sum(max(f, 0.0) for f, s in zip(fraction, names, strict=True) if s not in ("H", "He"))
         born.append(stars)
         composition.append(fraction)
-        tables.append(table.at(metals))
+        mean = table.at(metals)
+        more = chance.departure(stars, table.age, random) if chance else (0.0, 0.0)
+        tables.append(tuple(a + b for a, b in zip(mean, more, strict=True)))
         came += galaxy.inflow * dt * pristine
         gas = gas + galaxy.inflow * dt * pristine - (stars + wind) * fraction
         whole += galaxy.inflow * dt - stars - wind
@@ -121,12 +165,18 @@ def run(table, galaxy):
 
 
 def main():
-    """Run the invented galaxy on a file, with and without losing the ejecta of Type Ia supernovae."""
+    """Run the invented galaxy with and without ejecta of Type Ia supernovae, then small ones by chance."""
     table = read(sys.argv[1])
     for share in (0.0, 0.8):
         out = run(table, Galaxy(lost={"thermonuclear": share}))
         oxygen, iron = (out["gas"][-1][table.species.index(s)] / out["mass"][-1] for s in ("O", "Fe"))
         print(f"Ia ejecta lost {share:.0%}: O {oxygen:.3e}, Fe {iron:.3e} by mass, O/Fe {oxygen / iron:.2f}")
+    if len(sys.argv) > 2:
+        chance = read_chance(sys.argv[2], table)
+        small = Galaxy(gas=3e4, inflow=3e-6, steps=50)
+        ends = [run(table, small, chance, seed)["gas"][-1] for seed in range(30)]
+        iron = np.log10([gas[table.species.index("Fe")] / gas[table.species.index("H")] for gas in ends])
+        print(f"30 galaxies of {small.gas:g} Msun: [Fe/H] spread by {iron.std(ddof=1):.2f} dex")
 
 
 if __name__ == "__main__":

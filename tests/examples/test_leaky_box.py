@@ -4,14 +4,16 @@ import ast
 from dataclasses import replace
 from pathlib import Path
 
+import h5py
 import numpy as np
 import pytest
 
 from steelyard.integrate import Population, StellarSource
 from steelyard.integrate.handoff import handoff, write_handoff
 from steelyard.integrate.popfile import default_population
+from steelyard.integrate.scatter import scatter, write_scatter
 from steelyard.scripts.examples import leaky_box
-from steelyard.scripts.examples.leaky_box import Galaxy, Table, read, run
+from steelyard.scripts.examples.leaky_box import Galaxy, Table, read, read_chance, run
 
 
 @pytest.fixture(scope="module")
@@ -89,3 +91,50 @@ def test_the_same_digits_from_memory(made, table):
     )
     a, b = (run(t, Galaxy(steps=40)) for t in (memory, table))
     assert np.array_equal(a["gas"], b["gas"]) and np.array_equal(a["locked"], b["locked"])
+
+
+@pytest.fixture(scope="module")
+def chance(made, table, tmp_path_factory):
+    """Populations of 1000 Msun at the lowest metallicity, drawn star by star."""
+    path = tmp_path_factory.mktemp("drawn") / "scatter.h5"
+    population = made.results[0].population
+    ages = np.geomspace(3e6, 1.38e10, 25)
+    write_scatter(scatter(population, 1e3, 1500, ages=ages, convention="net", seed=5), path)
+    return path
+
+
+def test_a_scatter_file_gives_the_spread_that_its_exact_covariance_tells(table, chance):
+    """Variances of independent draws add: Campbell's theorem, kept in the file, against galaxies run."""
+    few = Galaxy(gas=2e5, inflow=0.0, outflow=0.0, star_formation=5e-11, steps=25, until=8e9)
+    drawn = read_chance(chance, table)
+    ends = np.array([run(table, few, drawn, seed)["gas"][-1] for seed in range(150)])
+    mean = run(table, few)
+    step = few.until / few.steps
+    with h5py.File(chance) as file:
+        ages, covariance = file["time"][:], file["covariance"][:]
+    for name in ("O", "Mg", "Fe"):
+        i = table.species.index(name)
+        variance = 0.0
+        for k in range(few.steps - 1):
+            stars = few.star_formation * mean["mass"][k] * step
+            count = round(stars / drawn.mass)
+            age = (few.steps - k - 1) * step
+            of_one = np.interp(np.log10(age), np.log10(ages), covariance[:, i, i])
+            variance += (stars / (count * drawn.mass)) ** 2 * count * of_one
+        assert ends[:, i].std(ddof=1) == pytest.approx(variance**0.5, rel=0.2)
+        assert ends[:, i].mean() == pytest.approx(mean["gas"][-1][i], abs=4 * (variance / 150) ** 0.5)
+
+
+def test_mass_is_conserved_with_chance_too(table, chance):
+    out = run(table, Galaxy(gas=3e4, inflow=3e-6, steps=30), read_chance(chance, table), seed=2)
+    assert np.all(abs(out["gas"][-1] + out["locked"] + out["left"] - out["came"] - out["made"]) < 1e-10 * 3e4)
+    again = run(table, Galaxy(gas=3e4, inflow=3e-6, steps=30), read_chance(chance, table), seed=3)
+    metals = [np.log10(one["gas"][-1][3:].sum() / one["mass"][-1]) for one in (out, again)]
+    assert metals[0] != metals[1]
+
+
+def test_other_draws_are_refused(made, table, tmp_path):
+    drawn = scatter(made.results[0].population, 1e3, 5, ages=[1e9], convention="total")
+    write_scatter(drawn, tmp_path / "total.h5")
+    with pytest.raises(SystemExit, match="net yields"):
+        read_chance(tmp_path / "total.h5", table)
