@@ -21,9 +21,10 @@ from steelyard.yields.units import plain
 from .imf import CallableIMF, MassFunction, imf, kroupa_2001
 from .laws import law_of, named, with_law
 from .lifetimes import LifetimeCurve, LifetimeLaw, lifetimes, tabulated
-from .ranges import Ground, Span, spans
+from .ranges import spans
 from .results import PopulationYields
 from .sources import STELLAR_KINDS, DelayedSource, Edges, Join, Source, StellarSource, interpolation
+from .span import Ground, Span
 from .tracks import Columns, Track, braid, event_row, strands
 from .weighing import Products, weigh
 from .weights import Segments, segments

@@ -6,85 +6,22 @@ Every star that is born belongs to exactly one span, so that budgets close.
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass, replace
+from dataclasses import replace
 from itertools import pairwise
 
 import numpy as np
 from numpy.typing import NDArray
 
-from steelyard.yields.curve import Curve, blend
+from steelyard.yields.curve import Curve
 from steelyard.yields.errors import InputError
 from steelyard.yields.nuclides import parse
 
+from .collapse import events
 from .sources import Edges, Join, StellarSource
-from .tracks import Columns, Track
+from .span import Ground, Span
+from .tracks import Track
 
 Array = NDArray[np.float64]
-
-
-@dataclass(frozen=True, eq=False)
-class Span:
-    """A range of initial mass served in one way.
-
-    Attributes
-    ----------
-    lo, hi : float
-        Msun.
-    owner : int
-        Position of the stellar source that the ejecta count for.
-    how : str
-        Id of the set, or the policy of the join or edge.
-    curve : Curve
-        From lo to hi; columns as in `Columns`.
-    collapse : bool
-        Whether the stars that die here are core-collapse events.
-    implodes : float
-        The share of them that implodes.
-    outcomes : tuple of Curve
-        Where only a share implodes: what those that explode leave, and those that
-        implode. `curve` is their mean.
-    """
-
-    lo: float
-    hi: float
-    owner: int
-    how: str
-    curve: Curve
-    collapse: bool = False
-    implodes: float = 0.0
-    outcomes: tuple[Curve, ...] = ()
-
-    @property
-    def parts(self) -> tuple[tuple[float, Curve], ...]:
-        """The ways in which stars of these masses may end: the share of each, and its curve."""
-        if not self.outcomes:
-            return ((1.0, self.curve),)
-        return tuple(zip((1.0 - self.implodes, self.implodes), self.outcomes, strict=True))
-
-
-@dataclass(frozen=True, eq=False)
-class Ground:
-    """What the joins and edges need to know of the population.
-
-    Attributes
-    ----------
-    columns : Columns
-    birth : ndarray, shape (species,)
-        Mass fractions at birth.
-    limits : pair of float
-        Limits of the mass function, Msun.
-    """
-
-    columns: Columns
-    birth: Array
-    limits: tuple[float, float]
-
-    def row(self, mass: float, remnant: float) -> Array:
-        """Return the row of a star that ejects ``mass - remnant`` at birth composition."""
-        ejected = mass - remnant
-        listed = float(self.birth[self.columns.apart].sum())
-        accounts = [ejected * (1 - listed), 0.0, ejected, remnant, 0.0]
-        return np.concatenate([ejected * self.birth, np.zeros(len(self.birth)), accounts])
 
 
 def spans(
@@ -136,7 +73,7 @@ def spans(
         out += served[i]
     out = _edges(out, edges, ground)
     _check_joins(joins, sources, tracks, order)
-    return _events(out, sources, tracks, order, ground, notes), notes
+    return events(out, sources, tracks, order, ground, notes), notes
 
 
 def _series(
@@ -317,84 +254,6 @@ def _outer(policy: str, lo: float, hi: float, near: Span, ground: Ground, side: 
     else:
         values = np.stack([ground.row(lo, lo), ground.row(hi, hi)])
     return Span(lo, hi, near.owner, policy, Curve(np.array([lo, hi]), values, None, share))
-
-
-def _events(
-    inner: list[Span],
-    sources: Sequence[StellarSource],
-    tracks: Sequence[Sequence[Track]],
-    order: Sequence[int],
-    ground: Ground,
-    notes: list[str],
-) -> list[Span]:
-    """Mark the spans that die as core-collapse events, and let windows implode."""
-    out = inner
-    for i in order:
-        source = sources[i]
-        if source.kind != "core-collapse":
-            continue
-        lowest = max(
-            source.events_from, max((s.hi for s in out if s.owner != i and s.hi <= _top(out, i)), default=0.0)
-        )
-        out = [p for s in out for p in _split(s, [lowest])]
-        out = [replace(s, collapse=s.owner == i and s.lo >= lowest) for s in out]
-        for a, b, probability in source.implosions:
-            out = [p for s in out for p in _split(s, [a, b])]
-            mine = [s.collapse and a <= s.lo and s.hi <= b for s in out]
-            out = [
-                _imploded(s, probability, tracks[i], ground) if own else s
-                for s, own in zip(out, mine, strict=True)
-            ]
-            if probability and not any(mine):
-                notes.append(
-                    f"{source.kind}: no star that collapses is born at {a:g}-{b:g} Msun, which should implode"
-                )
-        imploding = [s.outcomes[1] if s.outcomes else s.curve for s in out if s.implodes]
-        if source.implosions and not any(
-            curve.values[:, ground.columns.account("ejected")].any() for curve in imploding
-        ):
-            notes.append(f"{source.kind}: the sets list no winds apart; stars that implode eject nothing")
-    return out
-
-
-def _top(inner: Sequence[Span], owner: int) -> float:
-    return max((s.hi for s in inner if s.owner == owner), default=0.0)
-
-
-def _split(span: Span, masses: Sequence[float]) -> list[Span]:
-    edges = [span.lo, *sorted(m for m in masses if span.lo < m < span.hi), span.hi]
-    if len(edges) == 2:
-        return [span]
-    return [
-        replace(
-            span,
-            lo=a,
-            hi=b,
-            curve=span.curve.between(a, b),
-            outcomes=tuple(one.between(a, b) for one in span.outcomes),
-        )
-        for a, b in pairwise(edges)
-    ]
-
-
-def _imploded(span: Span, probability: float, entries: Sequence[Track], ground: Ground) -> Span:
-    """A span of which a share of stars ejects its wind only; outside the sets' own models, nothing."""
-    if not probability:
-        return span
-    entry = next((e for e in entries if e.name == span.how), None)
-    if entry is not None:
-        wind = entry.imploded.between(span.lo, span.hi)
-    else:
-        values = np.stack([ground.row(span.lo, span.lo), ground.row(span.hi, span.hi)])
-        wind = Curve(np.array([span.lo, span.hi]), values, None, np.zeros((2, 0)))
-    wind = replace(wind, share=np.zeros((len(wind.mass), span.curve.share.shape[1])))
-    if probability == 1:
-        return replace(span, curve=wind, implodes=1.0)
-    both = (span.curve, wind)
-    mean = blend(both, (1 - probability, probability))
-    # the wind is nobody's: `blend` puts the shares side by side, the exploding stars' first
-    mean = replace(mean, share=mean.share[:, : span.curve.share.shape[1]])
-    return replace(span, curve=mean, implodes=probability, outcomes=both)
 
 
 def _check_joins(

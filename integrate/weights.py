@@ -17,7 +17,7 @@ from numpy.typing import NDArray
 from steelyard.yields.curve import Curve
 
 from .imf import MassFunction
-from .ranges import Span
+from .span import Span
 
 Array = NDArray[np.float64]
 

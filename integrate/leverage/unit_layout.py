@@ -11,8 +11,9 @@ from numpy.typing import NDArray
 from steelyard.yields.curve import Curve
 
 from ..population import Population
-from ..ranges import Ground, spans
+from ..ranges import spans
 from ..sources import StellarSource
+from ..span import Ground
 from ..tracks import Columns, Strand, braid
 from ..weights import Segments, segments
 

@@ -24,8 +24,9 @@ from steelyard.yields.curve import bracket
 from steelyard.yields.errors import InputError
 
 from ..population import Population
-from ..ranges import Ground, Span, spans
+from ..ranges import spans
 from ..sources import Mixed, StellarSource, set_id
+from ..span import Ground, Span
 from ..tracks import Columns, Strand, Track, braid, strands
 from ..weights import Segments, segments
 

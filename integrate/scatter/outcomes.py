@@ -17,8 +17,9 @@ from steelyard.yields.errors import InputError
 
 from ..delays import Delay
 from ..population import Population
-from ..ranges import Ground, spans
+from ..ranges import spans
 from ..sources import DelayedSource, FailureTable, StellarSource
+from ..span import Ground
 from ..tracks import Columns, braid, event_row, strands
 from ..weights import Segments, segments
 

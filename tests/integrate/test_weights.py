@@ -12,7 +12,7 @@ from mpmath import mp, mpf
 from scipy.interpolate import PchipInterpolator
 
 from steelyard.integrate import Population, StellarSource, imf
-from steelyard.integrate.ranges import Span
+from steelyard.integrate.span import Span
 from steelyard.integrate.weights import basis, dead_weights, dying_basis, segments
 from steelyard.yields import load
 from steelyard.yields.curve import Curve, slice_curve

@@ -3,15 +3,12 @@ import pint
 import pytest
 
 from steelyard.yields import InputError, Slice, YieldSet, load, mixture
+from steelyard.yields.conventions import factor_from_total, net_from_total, total_from_factor, total_from_net
 from steelyard.yields.convert import (
     birth_mixture,
-    factor_from_total,
-    net_from_total,
     overabundance,
     rescaled,
     to_elements,
-    total_from_factor,
-    total_from_net,
 )
 
 

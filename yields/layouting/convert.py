@@ -17,7 +17,7 @@ from ..nuclides import parse
 from ..readers import figure
 from ..units import plain
 from .declared import Layout, Value
-from .gather import Gathered, Model
+from .models import Gathered, Model
 from .reading import Reading, Table
 
 Array = NDArray[np.float64]

@@ -3,51 +3,18 @@
 from __future__ import annotations
 
 from collections.abc import Iterator, Mapping, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass
 from functools import partial
 
 from ..errors import InputError, nearest
-from ..nuclides import parse
 from ..readers import Sheet, figure
 from .declared import Drop, Layout, ModelField
+from .models import Gathered, Model, Names, Place
 from .template import Template
 
 Key = tuple[float, float, str]
-#: convention, and which of the columns that are summed
-Place = tuple[str, int]
 
 AXES = ("metallicity", "mass", "variant")
-
-
-@dataclass
-class Model:
-    """One model as gathered: texts as printed."""
-
-    where: str
-    fields: dict[str, str] = field(default_factory=dict)
-    values: dict[Place, dict[str, str]] = field(default_factory=dict)
-
-    @property
-    def label(self) -> str:
-        """The model in words, for messages."""
-        parts = []
-        if "mass" in self.fields:
-            parts.append(f"{self.fields['mass']} Msun")
-        if "metallicity" in self.fields:
-            parts.append(f"Z = {self.fields['metallicity']}")
-        if self.fields.get("variant"):
-            parts.append(self.fields["variant"])
-        return ", ".join(parts) or self.where
-
-
-@dataclass
-class Gathered:
-    """All models of some files."""
-
-    models: list[Model]
-    species: list[str]
-    units: dict[str, str]
-    warnings: list[str]
 
 
 @dataclass(frozen=True)
@@ -58,36 +25,6 @@ class _Column:
     place: Place
     species: str | None
     gaps: Mapping[str, str]
-
-
-class _Names:
-    """Printed names of species and what they become; None for what isn't read."""
-
-    def __init__(self, layout: Layout) -> None:
-        self.layout = layout
-        self.known: dict[str, str | None] = {}
-        self.order: dict[str, None] = {}
-
-    def __call__(self, printed: str, where: str) -> str | None:
-        if printed not in self.known:
-            self.known[printed] = self._read(printed, where)
-            if self.known[printed] is not None:
-                self.order[self.known[printed]] = None
-        return self.known[printed]
-
-    def _read(self, printed: str, where: str) -> str | None:
-        layout = self.layout
-        if printed in layout.ignore_species:
-            return None
-        name = layout.rename.get(printed, printed)
-        try:
-            canonical = parse(name).name
-        except InputError as error:
-            if name in layout.rest or printed in layout.rest:
-                return name
-            mend = f"{error.mend}; or list it under [rest], [ignore] or [rename] of the layout"
-            raise InputError(error.what, where=where, mend=mend) from None
-        return None if canonical in layout.ignore_species else canonical
 
 
 def gather(sheets: Sequence[Sheet], layout: Layout) -> Gathered:
@@ -108,7 +45,7 @@ def gather(sheets: Sequence[Sheet], layout: Layout) -> Gathered:
     InputError
         A column isn't there, a cell can't be read, a yield is given twice, a model lacks a figure.
     """
-    names = _Names(layout)
+    names = Names(layout)
     models: dict[Key, Model] = {}
     beside: dict[Key, dict[str, str]] = {}
     units: dict[str, str] = {}
@@ -214,7 +151,7 @@ def _outer(sheet: Sheet, layout: Layout) -> dict[str, str]:
     return found
 
 
-def _columns(sheet: Sheet, layout: Layout, names: _Names) -> list[_Column]:
+def _columns(sheet: Sheet, layout: Layout, names: Names) -> list[_Column]:
     """The columns of yields of one sheet; none where it has none of them."""
     taken = {layout.species, *layout.ignore_columns}
     for spec in layout.model.values():
@@ -325,7 +262,7 @@ def _set_values(
     model: Model,
     sheet: Sheet,
     layout: Layout,
-    names: _Names,
+    names: Names,
     row: int,
     fields: Mapping[str, str],
     group: Sequence[_Column],
