@@ -126,17 +126,18 @@ def _read(text: str, unit: str, name: str, where: str, hint: str) -> float:
         quantity = registry().Quantity(text)
     except Exception:  # pint raises half a dozen unrelated kinds
         raise InputError(f"{name} has a unit that isn't known: {text!r}", where=where, mend=hint) from None
-    return _convert(quantity, unit, name, where, hint)
+    return _convert(quantity, unit, name, where, hint, text)
 
 
-def _convert(quantity: pint.Quantity, unit: str, name: str, where: str, hint: str) -> Any:
+def _convert(quantity: pint.Quantity, unit: str, name: str, where: str, hint: str, shown: str = "") -> Any:
     import pint
 
     try:
         return quantity.m_as(unit or "dimensionless")
     except pint.DimensionalityError:
         raise InputError(
-            f"{name} has the wrong dimension: {quantity:~} is not a quantity of {unit or 'pure number'}",
+            f"{name} has the wrong dimension: {shown or f'{quantity:~}'} is not a quantity of"
+            f" {unit or 'pure number'}",
             where=where,
             mend=hint,
         ) from None
