@@ -5,6 +5,9 @@ from __future__ import annotations
 import os
 import secrets
 import stat
+from collections.abc import Iterator
+from contextlib import contextmanager
+from contextvars import ContextVar
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -18,6 +21,52 @@ if TYPE_CHECKING:
 
 #: what a result is called in the files that hold one
 FORMAT = "steelyard population yields"
+
+#: what stands before the command in an output
+MADE_BY = "made by: steelyard "
+
+_COMMAND: ContextVar[str] = ContextVar("command", default="")
+
+
+@contextmanager
+def made_by(command: str) -> Iterator[None]:
+    """Say in every output of the block which command makes it, so that it can be made again.
+
+    Parameters
+    ----------
+    command : str
+        As for a shell, without the name of the program, of the population in population.toml and
+        errors stated in spread.toml.
+
+    Examples
+    --------
+    >>> from steelyard.integrate import Population, StellarSource
+    >>> stars = Population(0.02, [StellarSource("agb", ["karakas-2010"])])
+    >>> with made_by("weigh population.toml"):
+    ...     origin(stars)[0]
+    'made by: steelyard weigh population.toml'
+    """
+    token = _COMMAND.set(command)
+    try:
+        yield
+    finally:
+        _COMMAND.reset(token)
+
+
+def command() -> str:
+    """Return the command that is running, as `made_by` was told; empty where there is none."""
+    return _COMMAND.get()
+
+
+def origin(population: Population) -> list[str]:
+    """Return what it takes to make an output again, as lines: the command, and the population's file."""
+    from .popfile import population_to_toml
+
+    return [
+        *([f"{MADE_BY}{command()}"] if command() else []),
+        "population file:",
+        *(f"    {line}" for line in population_to_toml(population).splitlines()),
+    ]
 
 
 def provenance(result: PopulationYields) -> list[str]:
@@ -43,8 +92,7 @@ def provenance(result: PopulationYields) -> list[str]:
         *sets,
         *(f"policy {line}" for line in told["policies"]),
         *(f"note {line}" for line in told["notes"]),
-        "population file:",
-        *(f"    {line}" for line in told["population"].splitlines()),
+        *origin(result.population),
     ]
 
 

@@ -19,12 +19,11 @@ from steelyard.integrate.contrasting.telling import (
     share_sentences,
     signed,
 )
-from steelyard.integrate.popfile import default_population, read_ages, read_population, told
+from steelyard.integrate.popfile import told
 from steelyard.integrate.population import Population
 from steelyard.integrate.provenance import summary
-from steelyard.scripts import terminal
+from steelyard.scripts import given, terminal
 from steelyard.yields.errors import InputError
-from steelyard.yields.nuclides import parse
 
 #: columns of species side by side
 WIDTH = 10
@@ -99,8 +98,14 @@ def command(
         raise InputError("--json and --markdown exclude each other", mend="give one of the two")
     if not swap:
         raise InputError("nothing is swapped", where="--swap", mend="such as --swap imf=salpeter-1955")
-    population = read_population(file) if file else default_population()
-    made = design(population, _swaps(swap, population), _ages(ages), _elements(elements), common_range)
+    population = given.population(file)
+    made = design(
+        population,
+        _swaps(swap, population),
+        given.read_given_ages(ages) if ages else None,
+        _elements(elements),
+        common_range,
+    )
     count = min(made.size, most) if full else len(made.one_at_a_time)
     with terminal.slow(f"weighing {count} populations"):
         found = contrast(made, full=full, convention="net" if net else "total", most=most)
@@ -134,20 +139,8 @@ def _swaps(texts: Sequence[str], population: Population) -> dict[str, list[Any]]
     return swaps
 
 
-def _ages(text: str) -> Any:
-    if not text:
-        return None
-    with told("--ages"):
-        return read_ages(terminal.words(text, "--ages"))
-
-
 def _elements(text: str) -> Any:
-    if text == "all":
-        return "elements"
-    if not text:
-        return None
-    with told("--elements"):
-        return [parse(one).name for one in terminal.words(text, "--elements")]
+    return "elements" if text == "all" else given.names(text) or None
 
 
 def _divided(found: Contrast) -> Any:

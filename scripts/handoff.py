@@ -2,29 +2,19 @@
 
 from __future__ import annotations
 
-from dataclasses import replace
 from pathlib import Path
-from typing import Any
 
 import typer
 
-from steelyard.integrate.popfile import default_population, read_population, told
-from steelyard.integrate.population import read_ages
-from steelyard.scripts import terminal
+from steelyard.scripts import given, terminal
 from steelyard.yields.errors import InputError, nearest
-from steelyard.yields.nuclides import parse
 from steelyard.yields.units import plain
 
 FORMATS = ("hdf5", "netcdf", "fits", "votable", "ecsv", "csv")
 
 
 def command(
-    file: str = typer.Argument(
-        "",
-        metavar="FILE",
-        help="Population file (TOML). Default: that of `steelyard weigh --template`.",
-        show_default=False,
-    ),
+    file: str = given.POPULATION,
     lowest: str = typer.Option(
         "1e-4", "--from", metavar="Z", help="Lowest metallicity, 0 too; nodes are chosen."
     ),
@@ -35,6 +25,7 @@ def command(
     species: str = typer.Option(
         "", metavar="LIST", help="elements, nuclides, or a list, in place of the file's."
     ),
+    changes: list[str] = given.WITH,
     form: str = typer.Option("hdf5", "--format", metavar="|".join(FORMATS), help="Form of the file."),
     output: str = typer.Option(..., "--output", "-o", metavar="FILE", help="File to write."),
 ) -> None:
@@ -52,23 +43,14 @@ def command(
 
     if form not in FORMATS:
         raise InputError(f"format {form!r} isn't known", where="--format", mend=nearest(form, FORMATS))
-    population = read_population(file) if file else default_population()
-    if species in ("elements", "nuclides"):
-        population = replace(population, species=species)
-    elif species:
-        with told("--species"):
-            names = [parse(one).name for one in terminal.words(species, "--species")]
-            population = replace(population, species=names)
-    given: Any = None
-    if ages:
-        with told("--ages"):
-            given = read_ages(terminal.words(ages, "--ages"))
+    population = given.population(file, changes, species=species)
+    nodes = given.read_given_ages(ages) if ages else None
     if metallicities:
         zs = plain(terminal.words(metallicities, "--metallicities"), "", "--metallicities")
     else:
         zs = [plain(lowest, "", "--from"), plain(highest, "", "--to")]
     with terminal.slow("weighing"):
-        made = handoff(population, zs, given, error, chosen=not metallicities)
+        made = handoff(population, zs, nodes, error, chosen=not metallicities)
     with terminal.slow("writing"):
         write_handoff(made, Path(output), form)
     print(

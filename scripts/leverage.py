@@ -12,10 +12,10 @@ import typer
 
 from steelyard.integrate.leverage import BIRTH, Leverage, leverage
 from steelyard.integrate.leverage.telling import sentence, to_dict, write_csv
-from steelyard.integrate.popfile import default_population, read_ages, read_population, told
+from steelyard.integrate.popfile import told
 from steelyard.integrate.population import Population
 from steelyard.integrate.results import Convention
-from steelyard.scripts import terminal
+from steelyard.scripts import given, terminal
 from steelyard.yields.errors import InputError
 from steelyard.yields.nuclides import parse
 
@@ -26,12 +26,7 @@ UNIT = "Msun per Msun formed"
 
 
 def command(
-    file: str = typer.Argument(
-        "",
-        metavar="FILE",
-        help="Population file (TOML). Default: the population that `steelyard weigh --template` writes.",
-        show_default=False,
-    ),
+    file: str = given.POPULATION,
     element: Annotated[
         list[str] | None,
         typer.Option(
@@ -43,11 +38,12 @@ def command(
             show_default=False,
         ),
     ] = None,
-    age: str = typer.Option(
+    ages: str = typer.Option(
         "", metavar="LIST", help='Ages such as "10 Myr, 1 Gyr". Default: the oldest of the file.'
     ),
     net: bool = typer.Option(False, "--net", help="Of net yields: less what was there at birth."),
     top: int = typer.Option(3, metavar="N", help="How many models to list for each element."),
+    changes: list[str] = given.WITH,
     output: str = typer.Option(
         "", "--output", "-o", metavar="DIR", help="Folder for the files. Default: the current one."
     ),
@@ -66,17 +62,16 @@ def command(
     \b
     Examples:
       steelyard leverage --elements O,Fe --output results
-      steelyard leverage --elements Mn --age "100 Myr, 13.8 Gyr" --net --top 5 --no-figures
+      steelyard leverage --elements Mn --ages "100 Myr, 13.8 Gyr" --net --top 5 --no-figures
       steelyard leverage --elements O --json
     """
     if top < 1:
         raise InputError(f"{top} models can't be listed", where="--top", mend="give 1 or more")
-    population = read_population(file) if file else default_population()
+    population = given.population(file, changes, ages=ages)
     names = _elements(population, element or [])
-    with told("--age" if age else ""):
-        ages = read_ages(terminal.words(age, "--age")) if age else (max(population.ages),)
+    wanted = population.ages if ages else (max(population.ages),)
     with told(file), terminal.slow("weighing"):
-        found = leverage(replace(population, species=names, ages=ages))
+        found = leverage(replace(population, species=names, ages=wanted))
     convention: Convention = "net" if net else "total"
     written = []
     undrawn = ""
@@ -96,9 +91,7 @@ def command(
 
 def _elements(population: Population, asked: Sequence[str]) -> list[str]:
     if asked:
-        with told("--elements"):
-            named = [one for text in asked for one in terminal.words(text, "--elements")]
-            return list(dict.fromkeys(parse(one).name for one in named))
+        return given.names(",".join(asked))
     if not isinstance(population.species, str):
         return [parse(one).name for one in population.species]
     symbols = {parse(one).symbol for one in population.prepared.columns.species}

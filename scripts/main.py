@@ -37,6 +37,17 @@ INTERRUPTED, PIPE_CLOSED, UNUSABLE = 130, 141, 2
 SETTINGS = {"help_option_names": ["-h", "--help"], "max_content_width": 100}
 
 
+def single(name: str) -> Any:
+    """Return a command by its name, imported now; outputs of some say how they were made."""
+    from steelyard.scripts import recorded
+
+    alone = typer.Typer(add_completion=False, rich_markup_mode=None)
+    kind = recorded.RecordedCommand if name in recorded.COMMANDS else TyperCommand
+    module = import_module(f"steelyard.scripts.{name}")
+    alone.command(name, cls=kind, context_settings=SETTINGS)(module.command)
+    return typer.main.get_command(alone)
+
+
 class Commands(TyperGroup):
     """Subcommands that are imported when they are run, not when they are listed."""
 
@@ -55,10 +66,7 @@ class Commands(TyperGroup):
             from steelyard.yields.errors import InputError, nearest
 
             raise InputError(f"there is no command {name!r}", mend=nearest(name, COMMANDS))
-        single = typer.Typer(add_completion=False, rich_markup_mode=None)
-        module = import_module(f"steelyard.scripts.{name}")
-        single.command(name, context_settings=SETTINGS)(module.command)
-        return name, typer.main.get_command(single), args[1:]
+        return name, single(name), args[1:]
 
     def main(self, args: Sequence[str] | None = None, standalone_mode: bool = True, **settings: Any) -> Any:
         """Run, and turn whatever ends the run into a status and at most one line."""

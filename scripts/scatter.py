@@ -10,11 +10,10 @@ from typing import Any
 import numpy as np
 import typer
 
-from steelyard.integrate.popfile import default_population, read_ages, read_population, told
-from steelyard.integrate.population import Population
+from steelyard.integrate.popfile import read_ages, told
 from steelyard.integrate.scatter import MODES, ScatteredYields, scatter, write_scatter, write_statistics
 from steelyard.integrate.scatter.result import LEVELS
-from steelyard.scripts import terminal
+from steelyard.scripts import given, terminal
 from steelyard.yields.errors import InputError, nearest
 from steelyard.yields.nuclides import parse
 from steelyard.yields.units import plain
@@ -53,6 +52,7 @@ def command(
         "", metavar="LIST", help="Ratios of the figure, such as Mg/Fe,C/O. Default: up to six."
     ),
     workers: int = typer.Option(0, metavar="N", help="Threads. Default: as many as there are cores."),
+    changes: list[str] = given.WITH,
     output: str = typer.Option(
         "", "--output", "-o", metavar="DIR", help="Folder for the files. Default: the current one."
     ),
@@ -79,7 +79,9 @@ def command(
         raise InputError(f"{mode!r} isn't a way to draw", where="--mode", mend=nearest(mode, MODES))
     if workers < 0:
         raise InputError(f"{workers} threads can't work", where="--workers", mend="give 1 or more")
-    population = _population(file, ages, species)
+    population = given.population(file, changes, ages=ages, species=species)
+    if not (file or ages):
+        population = replace(population, ages=read_ages(STEPS))
     size = plain(mass, "Msun", "--mass")
     pairs = [_pair(one) for one in terminal.words(ratio, "--ratio")] if ratio else None
     with told(file), terminal.slow("drawing"):
@@ -97,22 +99,6 @@ def command(
     print("written: " + ", ".join(str(path) for path in written))
     if undrawn:
         print(f"not drawn: {undrawn}")
-
-
-def _population(file: str, ages: str, species: str) -> Population:
-    population = read_population(file) if file else default_population()
-    given: dict[str, Any] = {}
-    if ages:
-        with told("--ages"):
-            given["ages"] = read_ages(terminal.words(ages, "--ages"))
-    elif not file:
-        given["ages"] = read_ages(STEPS)
-    if species in ("elements", "nuclides"):
-        given["species"] = species
-    elif species:
-        with told("--species"):
-            given["species"] = [parse(one).name for one in terminal.words(species, "--species")]
-    return replace(population, **given)
 
 
 def _pair(text: str) -> tuple[str, str]:

@@ -195,3 +195,33 @@ def write_new(path: Path, text: str) -> None:
         raise InputError(f"can't be written: {error.strerror}", where=str(path)) from None
     finally:
         beside.unlink(missing_ok=True)
+
+
+def refuse_foreign(path: Path, own: str) -> None:
+    """Refuse to replace a file that nothing here has written: it may be somebody's paper.
+
+    Parameters
+    ----------
+    path : Path
+    own : str
+        What every file of ours holds.
+
+    Raises
+    ------
+    InputError
+        There is such a file, or a folder.
+    """
+    from steelyard.yields.errors import InputError
+
+    if path.is_dir():
+        raise InputError("this is a folder", where=str(path), mend="name a file in it")
+    try:
+        known = own.encode() in path.read_bytes()
+    except (FileNotFoundError, NotADirectoryError):
+        return  # a missing folder is refused where the file is written
+    except OSError as error:
+        raise InputError(f"can't be read: {error.strerror}", where=str(path)) from None
+    if not known:
+        raise InputError(
+            "this is no file of steelyard's, and isn't replaced", where=str(path), mend="name another file"
+        )

@@ -8,35 +8,24 @@ from typing import TYPE_CHECKING
 
 import typer
 
-from steelyard.integrate.popfile import default_population, read_ages, read_population, told
+from steelyard.integrate.popfile import told
 from steelyard.integrate.population import Population
 from steelyard.integrate.provenance import FORMAT, replace_file
-from steelyard.integrate.results import PopulationYields
-from steelyard.scripts import terminal
+from steelyard.scripts import given, terminal
 from steelyard.yields.errors import InputError, nearest
-from steelyard.yields.nuclides import parse
 
 if TYPE_CHECKING:
-    from steelyard.integrate.spread import YieldErrors
     from steelyard.integrate.typesetting import PaperTable
 
 #: formats, and what cites a paper in them; nothing where papers are named in full
 CITES = {"deluxetable": "citet", "booktabs": "cite", "mrt": "", "cds": "", "csv": ""}
-
-#: in place of a file that states errors
-ASSUMED = "assumed"
 
 #: the two files of the CDS
 DATA, README = "yields.dat", "ReadMe"
 
 
 def command(
-    file: str = typer.Argument(
-        "",
-        metavar="FILE",
-        help="Population file (TOML). Default: the population that `steelyard weigh --template` writes.",
-        show_default=False,
-    ),
+    file: str = given.POPULATION,
     format: str = typer.Option(
         "booktabs",
         "--format",
@@ -60,10 +49,11 @@ def command(
     ),
     spread: str = typer.Option(
         "",
-        metavar=f"FILE|{ASSUMED}",
+        metavar=f"FILE|{given.ASSUMED}",
         help="Errors of the published figures (TOML): yields get theirs, to one or two digits of it;"
-        f" {ASSUMED}: 0.15 dex on all metals, which no paper states.",
+        f" {given.ASSUMED}: 0.15 dex on all metals, which no paper states.",
     ),
+    changes: list[str] = given.WITH,
     output: str = typer.Option(
         "",
         "--output",
@@ -98,10 +88,10 @@ def command(
         )
     if output and bibtex and Path(output).resolve() == Path(bibtex).resolve():
         raise InputError("table and BibTeX can't go to one file", where="--bibtex", mend="name another file")
-    population = _changed(read_population(file) if file else default_population(), elements, ages)
+    population = _narrowed(given.population(file, changes, ages=ages), elements, ages)
     with told(file), terminal.slow("weighing"):
         result = population.weigh()
-        errors = _errors(result, spread) if spread else None
+        errors = given.errors(result, spread) if spread else None
     from steelyard.integrate.typesetting import paper_table
 
     chosen = terminal.words(sources, "--sources") if sources else ()
@@ -120,7 +110,9 @@ def command(
 
         files[Path(bibtex)] = entries(table.papers, result)
     for path in files:
-        _refuse_foreign(path)
+        # the data of the CDS say nothing of themselves
+        telling = path.with_name(README) if path.name == DATA and path.with_name(README).exists() else path
+        terminal.refuse_foreign(telling, f"{FORMAT}, steelyard")
     if output and format == "cds":
         terminal.folder(Path(output))
     for path, text in files.items():
@@ -133,26 +125,11 @@ def command(
         print("\nwritten: " + ", ".join(str(path) for path in files))
 
 
-def _changed(population: Population, elements: str, ages: str) -> Population:
+def _narrowed(population: Population, elements: str, ages: str) -> Population:
     """The population with the species and ages of the table only."""
-    with told("--ages" if ages else ""):
-        wanted = read_ages(terminal.words(ages, "--ages")) if ages else (max(population.ages),)
-    if not elements:
-        return replace(population, ages=wanted)
-    with told("--elements"):
-        names = [parse(one).name for one in terminal.words(elements, "--elements")]
-    return replace(population, ages=wanted, species=list(dict.fromkeys(names)))
-
-
-def _errors(result: PopulationYields, spread: str) -> YieldErrors:
-    from steelyard.integrate.spread import assumed
-    from steelyard.integrate.spread.file import read_spread
-
-    if spread == ASSUMED:
-        return assumed(result.population).propagate(result)
-    stated = read_spread(spread)
-    with told(spread):
-        return stated.propagate(result)
+    wanted = population.ages if ages else (max(population.ages),)
+    species = given.names(elements) or population.species
+    return replace(population, ages=wanted, species=species)
 
 
 def _texts(table: PaperTable, format: str, output: Path | None) -> dict[Path | None, str]:
@@ -174,21 +151,3 @@ def _methods(table: PaperTable, format: str) -> str:
     if CITES[format]:
         return latex.prose(table.methods, CITES[format])
     return machine.prose(table.methods)
-
-
-def _refuse_foreign(path: Path) -> None:
-    """Refuse to replace a file that nothing here has written: it may be the paper itself."""
-    if path.is_dir():
-        raise InputError("this is a folder", where=str(path), mend="name a file in it")
-    # the data of the CDS say nothing of themselves
-    telling = path.with_name(README) if path.name == DATA and path.with_name(README).exists() else path
-    try:
-        known = f"{FORMAT}, steelyard".encode() in telling.read_bytes()
-    except (FileNotFoundError, NotADirectoryError):
-        return  # a missing folder is refused where the file is written
-    except OSError as error:
-        raise InputError(f"can't be read: {error.strerror}", where=str(path)) from None
-    if not known:
-        raise InputError(
-            "this is no file of steelyard's, and isn't replaced", where=str(path), mend="name another file"
-        )

@@ -3,33 +3,24 @@
 from __future__ import annotations
 
 from collections.abc import Iterator, Sequence
-from dataclasses import replace
 from pathlib import Path
 from typing import TYPE_CHECKING, Any, Literal
 
 import numpy as np
 import typer
 
-from steelyard.integrate.popfile import default_population, read_ages, read_population, template, told
-from steelyard.integrate.population import Population
+from steelyard.integrate.popfile import template, told
 from steelyard.integrate.results import PopulationYields
-from steelyard.scripts import terminal
+from steelyard.scripts import given, terminal
 from steelyard.yields.errors import InputError
-from steelyard.yields.nuclides import parse
-from steelyard.yields.units import plain
 
 if TYPE_CHECKING:
     from steelyard.integrate.spread import YieldErrors
-
-HDF5_SIGNATURE = b"\x89HDF\r\n\x1a\n"
 
 TEMPLATE = "population.toml"
 
 #: columns; no table is wider
 WIDEST = 10_000
-
-#: in place of a file that states errors
-ASSUMED = "assumed"
 
 #: rates and amounts, as the headings say
 UNITS = {False: "Msun per Msun formed", True: "Msun per yr and Msun formed"}
@@ -39,8 +30,8 @@ def command(
     file: str = typer.Argument(
         "",
         metavar="FILE",
-        help="Population file (TOML), or an HDF5 file of an earlier result to weigh again. Default: the"
-        " population that --template writes.",
+        help="Population file (TOML), or any table, page or data file made of one, to weigh again. Default:"
+        " the population that --template writes.",
         show_default=False,
     ),
     ages: str = typer.Option(
@@ -56,10 +47,11 @@ def command(
     rate: bool = typer.Option(False, "--rate", help="Print yields per year at an age, not up to it."),
     spread: str = typer.Option(
         "",
-        metavar=f"FILE|{ASSUMED}",
+        metavar=f"FILE|{given.ASSUMED}",
         help="Errors of the published figures (TOML), carried through to every yield and [X/Fe];"
-        f" {ASSUMED}: 0.15 dex on all metals, which no paper states.",
+        f" {given.ASSUMED}: 0.15 dex on all metals, which no paper states.",
     ),
+    changes: list[str] = given.WITH,
     output: str = typer.Option(
         "", "--output", "-o", metavar="DIR", help="Folder for the files. Default: the current one."
     ),
@@ -76,9 +68,9 @@ def command(
     """Weigh a stellar population: what it ejects by element, source and time, per Msun formed.
 
     Prints the yields at the last age (or at each of --ages) and what they rest on. Writes yields.h5,
-    yields.csv and, as .png and .pdf, yields-over-time and production-pattern. Given the HDF5 file of
-    an earlier result, weighs its population again and says whether the digits agree (exit status 1
-    where they don't).
+    yields.csv and, as .png and .pdf, yields-over-time and production-pattern. Given any output of an
+    earlier run in place of a population file, makes it again and says whether the digits agree (exit
+    status 1 where they don't).
 
     \b
     Examples:
@@ -86,28 +78,28 @@ def command(
       steelyard weigh --template mine.toml
       steelyard weigh --metallicity 0.004 --ages "100 Myr, 13.8 Gyr" --no-figures
       steelyard weigh --species O,Mg,Fe --json
+      steelyard weigh --with core-collapse=limongi-chieffi-2018-R-v150 -o other
       steelyard weigh --species C,O,Mg,Fe --spread assumed --no-figures
     """
     if template:
         _write_template(file, output)
         return 0
-    if file and _is_hdf5(Path(file)):
-        if ages or metallicity or species or output or net or rate or spread:
+    if file and _is_earlier(_origin(file)):
+        if any((ages, metallicity, species, output, net, rate, spread, changes)):
             raise InputError(
                 "an earlier result is weighed again as it was, to compare the digits",
                 where=file,
                 mend="leave out all options but --json",
             )
-        return _again(Path(file), json)
+        return _again(_origin(file), json)
     if json and rate:
         raise InputError("the JSON holds amounts, no rates", where="--rate", mend="they are in yields.h5")
     if spread and rate:
         raise InputError("errors are of amounts, not of rates", where="--spread", mend="leave out --rate")
-    population = read_population(file) if file else default_population()
-    population = _changed(population, ages, metallicity, species)
+    population = given.population(file, changes, ages=ages, species=species, metallicity=metallicity)
     with told(file), terminal.slow("weighing"):
         result = population.weigh()
-        errors = _errors(result, spread) if spread else None
+        errors = given.errors(result, spread) if spread else None
     written, undrawn = [], []
     if output or not json:
         with terminal.slow("writing"):
@@ -123,23 +115,35 @@ def command(
     return 0
 
 
-def _errors(result: PopulationYields, spread: str) -> YieldErrors:
-    from steelyard.integrate.spread import assumed
-    from steelyard.integrate.spread.file import read_spread
+def _origin(file: str) -> Path:
+    """The file that tells how an output was made: of the two files of the CDS, the one beside the data."""
+    path = Path(file)
+    readme = path.parent / "ReadMe"
+    return readme if path.name == "yields.dat" and readme.is_file() else path
 
-    if spread == ASSUMED:
-        return assumed(result.population).propagate(result)
-    stated = read_spread(spread)
-    with told(spread):
-        return stated.propagate(result)
+
+def _is_earlier(path: Path) -> bool:
+    """Whether a file is one that was made of a population, not a population file."""
+    from steelyard.integrate.files import format_of
+    from steelyard.integrate.record import is_output
+
+    return path.suffix in (".h5", ".hdf5") or bool(format_of(path)) or (path.is_file() and is_output(path))
 
 
 def _again(path: Path, json: bool) -> int:
     """Compare a file with what its population weighs to now: 0 where they agree, 1 where not."""
-    from steelyard.integrate.files import agrees
+    from steelyard.integrate import files
+    from steelyard.integrate.record import is_output
+    from steelyard.integrate.scatter import again as drawn
+    from steelyard.scripts.recorded import again
 
     with terminal.slow("weighing"):
-        same, message = agrees(path)
+        if is_output(path):
+            same, message = again(path)
+        elif drawn.is_scatter(path):
+            same, message = drawn.agrees(path)
+        else:
+            same, message = files.agrees(path)
     if json:
         terminal.print_json({"file": str(path), "agrees": same, "message": message})
     else:
@@ -156,34 +160,6 @@ def _write_template(file: str, output: str) -> None:
         terminal.folder(Path(output))
     terminal.write_new(path, template())
     print(f"written: {path}; `steelyard weigh {path}` weighs it")
-
-
-def _is_hdf5(path: Path) -> bool:
-    if path.suffix in (".h5", ".hdf5"):
-        return True
-    if not path.is_file():  # a pipe could not be read a second time
-        return False
-    try:
-        with path.open("rb") as file:
-            return file.read(len(HDF5_SIGNATURE)) == HDF5_SIGNATURE
-    except OSError:
-        return False
-
-
-def _changed(population: Population, ages: str, metallicity: str, species: str) -> Population:
-    """The population with what the command line gives in place of the file."""
-    given: dict[str, Any] = {}
-    if ages:
-        with told("--ages"):
-            given["ages"] = read_ages(terminal.words(ages, "--ages"))
-    if metallicity:
-        given["metallicity"] = plain(metallicity, "", "--metallicity")
-    if species in ("elements", "nuclides"):
-        given["species"] = species
-    elif species:
-        with told("--species"):
-            given["species"] = [parse(one).name for one in terminal.words(species, "--species")]
-    return replace(population, **given) if given else population
 
 
 def _write(

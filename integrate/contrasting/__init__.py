@@ -3,7 +3,7 @@
 from .compare import MARKS, MOST, Contrast, contrast
 from .design import Design, Factor, design, served
 from .ingredients import Ingredient, ingredients
-from .swaps import read_swap
+from .swaps import read_swap, swapped
 from .variance import Parts, decompose, decompose_sample
 
 __all__ = [
@@ -21,4 +21,5 @@ __all__ = [
     "ingredients",
     "read_swap",
     "served",
+    "swapped",
 ]

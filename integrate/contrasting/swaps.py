@@ -57,6 +57,34 @@ def read_swap(text: str, population: Population) -> tuple[str, list[Any]]:
     return name, out
 
 
+def swapped(population: Population, text: str) -> Population:
+    """Return a population with one swap made.
+
+    Parameters
+    ----------
+    population : Population
+    text : str
+        ``ingredient=choice``, as of `read_swap`.
+
+    Raises
+    ------
+    InputError
+        The text names no ingredient, or several choices, or the choice doesn't suit.
+
+    Examples
+    --------
+    >>> from steelyard.integrate.popfile import default_population
+    >>> swapped(default_population(), "imf=salpeter-1955").imf.form
+    'salpeter-1955'
+    """
+    name, choices = read_swap(text, population)
+    if len(choices) != 1:
+        raise InputError(
+            f"{text!r} gives {len(choices)} choices", mend=f"give one, such as {name}={choices[0]}"
+        )
+    return ingredient(population, name).swap(population, choices[0])
+
+
 def _parts(rest: str, text: str) -> list[str]:
     """Cut at commas that stand outside of brackets and quotes."""
     parts, depth, quote = [""], 0, ""

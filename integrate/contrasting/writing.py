@@ -8,7 +8,7 @@ from importlib.metadata import version
 from pathlib import Path
 from typing import TYPE_CHECKING
 
-from ..popfile.text import population_to_toml
+from .. import provenance
 from ..provenance import replace_file, summary
 from .compare import Contrast
 from .telling import Row, rows
@@ -46,8 +46,7 @@ def origin(found: Contrast) -> list[str]:
         f"{found.convention} yields, Msun per Msun formed up to the age; dex: log10 of yield over base",
         *(f"set {one.id} sha256 {one.checksum}" for one in sets),
         *(f"note {line}" for line in found.notes),
-        "population file:",
-        *(f"    {line}" for line in population_to_toml(made.base).splitlines()),
+        *provenance.origin(made.base),
     ]
 
 

@@ -4,14 +4,14 @@ from __future__ import annotations
 
 import tomllib
 from collections.abc import Mapping, Sequence
-from dataclasses import replace
+from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import Any
 
 import numpy as np
 
 from .formats import read_stored
-from .layout import SCALES, StoredYields, error_arrays, stored
+from .layout import SCALES, Array, StoredYields, error_arrays, stored
 
 #: digits agree where they differ by less than this of the value, or `NOISE` of the dataset's largest
 SAME = 1e-12
@@ -43,28 +43,51 @@ def agrees(path: str | Path) -> tuple[bool, str]:
         fresh = _weighed(held)
     except (ValueError, RecursionError) as error:
         return False, f"{path}: can't be weighed again: {' '.join(str(error).split())}"
-    why = _changes(held, fresh)
+    why = changes(held.attributes, fresh.attributes)
     because = f" ({'; '.join(why)})" if why else ""
     for name in ("source", "species", "remnant_kind", "event"):
         if fresh.scales[name] != held.scales[name]:
             return False, f"{path}: weighed again, it has another list of {name}{because}"
-    worst, place, exact = 0.0, "", True
-    for name, values in held.arrays.items():
-        again = fresh.arrays[name]
-        exact = exact and np.array_equal(again, values)
+    found = compare(fresh.arrays, held.arrays)
+    if found.worst > SAME:
+        place = _place(held, found.name, found.at)
+        return False, f"{path}: the digits differ, most in {place}: {found.worst:.1e} of it{because}"
+    how = "to the last bit" if found.exact else f"to {SAME:g}"
+    return True, f"{path}: weighed again, the digits agree {how}{because}"
+
+
+@dataclass(frozen=True)
+class Apart:
+    """How far arrays lie apart: the largest difference of any figure, in units of itself, and where it is."""
+
+    exact: bool = True
+    worst: float = 0.0
+    name: str = ""
+    at: tuple[int, ...] = ()
+
+
+def compare(fresh: Mapping[str, Array], held: Mapping[str, Array]) -> Apart:
+    """Compare arrays by name; a NaN agrees with nothing, rounding of the smallest figures counts for none.
+
+    Examples
+    --------
+    >>> compare({"a": np.array([1.0, 2.0])}, {"a": np.array([1.0, 2.5])})
+    Apart(exact=False, worst=0.2, name='a', at=(1,))
+    """
+    worst = Apart()
+    for name, values in held.items():
+        again = fresh[name]
+        exact = worst.exact and np.array_equal(again, values)
+        worst = replace(worst, exact=exact)
         floor = NOISE * np.max(np.abs(again), initial=0.0)
         size = np.maximum(np.abs(again), np.abs(values))
         with np.errstate(invalid="ignore", divide="ignore"):
             apart = np.abs(again.astype(float) - values)
-            # a NaN in the file agrees with nothing
             off = np.where(apart <= floor, 0.0, np.nan_to_num(apart / size, nan=np.inf))
-        if off.size and off.max() > worst:
+        if off.size and off.max() > worst.worst:
             at = np.unravel_index(int(off.argmax()), off.shape)
-            worst, place = float(off.max()), _place(held, name, at)
-    if worst > SAME:
-        return False, f"{path}: the digits differ, most in {place}: {worst:.1e} of it{because}"
-    how = "to the last bit" if exact else f"to {SAME:g}"
-    return True, f"{path}: weighed again, the digits agree {how}{because}"
+            worst = Apart(exact, float(off.max()), name, tuple(int(i) for i in at))
+    return worst
 
 
 def _weighed(held: StoredYields) -> StoredYields:
@@ -81,9 +104,8 @@ def _weighed(held: StoredYields) -> StoredYields:
     return fresh
 
 
-def _changes(held: StoredYields, fresh: StoredYields) -> list[str]:
-    """What is not as it was when a file was written."""
-    now, then = fresh.attributes, held.attributes
+def changes(then: Mapping[str, Any], now: Mapping[str, Any]) -> list[str]:
+    """Return what is not as it was when a file was written, from its attributes and those of now."""
     told = []
     if then.get("steelyard_version") != now["steelyard_version"]:
         told.append(

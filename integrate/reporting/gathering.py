@@ -46,8 +46,6 @@ class Report:
         One swap at a time; None where nothing can be swapped.
     refused : tuple of str
         Why usual swaps aren't made.
-    command : str
-        The command line that makes it of its population in population.toml; empty where there is none.
     """
 
     result: PopulationYields
@@ -58,7 +56,6 @@ class Report:
     leverage: Leverage
     contrast: Contrast | None
     refused: tuple[str, ...]
-    command: str
 
     @property
     def population(self) -> Population:
@@ -99,7 +96,6 @@ def report(
     species: Sequence[str] = (),
     spread: Spread | None = None,
     swaps: Mapping[str, Any] | None = None,
-    command: str = "",
 ) -> Report:
     """Work out what a report tells of a population.
 
@@ -113,8 +109,6 @@ def report(
         Errors of the published figures; default: `assumed`.
     swaps : mapping, optional
         As `contrast` takes them; default: other published choices for each ingredient.
-    command : str
-        As `Report` has it.
 
     Returns
     -------
@@ -154,7 +148,6 @@ def report(
         leverage(replace(narrowed, species=list(chosen))),
         contrast(population, swaps, ages=[oldest], species=chosen) if swaps else None,
         refused,
-        command,
     )
 
 

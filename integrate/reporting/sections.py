@@ -15,7 +15,7 @@ from steelyard.yields.errors import InputError
 from ..citations import Citation, citations
 from ..contrasting.telling import rows, sentences, signed
 from ..popfile import population_to_toml
-from ..provenance import attributes
+from ..provenance import attributes, command
 from ..typesetting import bibtex, paper_table
 from ..typesetting import digits as rounding
 from ..typesetting.machine import prose
@@ -265,7 +265,7 @@ def remade(found: Report) -> Markup:
         href=f"data:text/plain;charset=utf-8,{quote(toml)}",
         download="population.toml",
     )
-    again = ["steelyard weigh population.toml", *([found.command] if found.command else [])]
+    again = ["steelyard weigh population.toml", *([f"steelyard {command()}"] if command() else [])]
     out: list[str] = [
         element(
             "p",
@@ -273,7 +273,7 @@ def remade(found: Report) -> Markup:
             " population.toml",
             "" if found.assumed else ", and the stated errors as spread.toml",
             "; then this weighs it",
-            " and makes this page again:" if found.command else ":",
+            " and makes this page again:" if command() else ":",
         ),
         code("\n".join(again), "Commands"),
         element("h3", "Population file", id="file"),

@@ -89,8 +89,7 @@ def write_scatter(drawn: ScatteredYields, path: str | Path) -> None:
 
 
 def _fill(file: h5py.File, drawn: ScatteredYields) -> None:
-    exact = drawn.population.weigh(drawn.ages)
-    told = attributes(exact) | {"format": FORMAT, "notes": drawn.notes}
+    told = attributes(drawn.population.weigh(drawn.ages)) | {"format": FORMAT, "notes": drawn.notes}
     told |= {"format_version": FORMAT_VERSION, "mass": drawn.mass}
     told |= {name: getattr(drawn, name) for name in ("mode", "convention", "count", "seed")}
     for name, value in told.items():
@@ -105,24 +104,11 @@ def _fill(file: h5py.File, drawn: ScatteredYields) -> None:
     for name, values in scales.items():
         if len(values):
             put(file, name, values, SCALES[name])
-    arrays: dict[str, Any] = {
-        "yields": np.moveaxis(drawn.yields, 1, 2),
-        "ejected": np.moveaxis(drawn.ejected, 1, 2),
-        "remnants": drawn.remnants,
-        "living": drawn.living,
-        "events": drawn.events,
-        "born": drawn.born,
-        "stars": drawn.stars,
-        "followed": exact.followed.astype(np.uint8),
-        "mean": drawn.law.mean,
-        "covariance": drawn.law.covariance,
-        "skewness": drawn.law.skewness,
-        "quantiles": drawn.quantiles(),
-    }
+    held = arrays(drawn)
     for name, entry in DATASETS.items():
-        values = arrays[name]
-        if values is None or not values.size:
+        if name not in held:
             continue
+        values = held[name]
         how: dict[str, Any] = {}
         if entry.dims[0] == "population" and values.ndim > 1:
             row = values[:1].size * values.itemsize
@@ -131,6 +117,25 @@ def _fill(file: h5py.File, drawn: ScatteredYields) -> None:
             how["shuffle"] = True
         told_of = entry.description.format(convention=drawn.convention)
         put(file, name, values, replace(entry, description=told_of), **how)
+
+
+def arrays(drawn: ScatteredYields) -> dict[str, Any]:
+    """Return every dataset of the file that isn't empty, by name."""
+    found = {
+        "yields": np.moveaxis(drawn.yields, 1, 2),
+        "ejected": np.moveaxis(drawn.ejected, 1, 2),
+        "remnants": drawn.remnants,
+        "living": drawn.living,
+        "events": drawn.events,
+        "born": drawn.born,
+        "stars": drawn.stars,
+        "followed": drawn.population.weigh(drawn.ages).followed.astype(np.uint8),
+        "mean": drawn.law.mean,
+        "covariance": drawn.law.covariance,
+        "skewness": drawn.law.skewness,
+        "quantiles": drawn.quantiles(),
+    }
+    return {name: values for name, values in found.items() if values is not None and values.size}
 
 
 def write_statistics(drawn: ScatteredYields, path: str | Path) -> None:

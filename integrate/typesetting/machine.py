@@ -172,9 +172,21 @@ def _numbered(table: PaperTable) -> Iterator[str]:
     yield f"Note ({len(notes) + 1}): References:"
     for text in _references(table):
         yield from _wrap(text, "    ", "        ")
-    yield f"Note ({len(notes) + 2}): Origin, long lines folded:"
+    yield f"Note ({len(notes) + 2}): Origin, long lines folded after \\:"
     for line in _origin(table):
-        yield from _wrap(line, "    ", "        ") or [""]
+        yield from _folded(ascii_text(line))
+
+
+def _folded(line: str) -> Iterator[str]:
+    """A line of the origin, which is read again: folded where there is a blank, and told so."""
+    inside = f"    {line}".rstrip()
+    while len(inside) > WIDTH:
+        at = inside.rfind(" ", 13, WIDTH - 1)
+        if at < 0:
+            break  # one long word
+        yield f"{inside[:at]} \\"
+        inside = f"            {inside[at + 1 :]}"
+    yield inside
 
 
 def _wrap(text: str, before: str = "", after: str = "") -> list[str]:

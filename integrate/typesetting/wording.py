@@ -209,7 +209,10 @@ def _explained(result: PopulationYields) -> str:
 
 
 def _stated(errors: YieldErrors) -> Iterator[str]:
-    yield "Errors are standard deviations, carried through from errors that we state on published yields:"
+    from ..spread import assumed
+
+    told = "assume" if errors.spread == assumed(errors.result.population) else "state"
+    yield f"Errors are standard deviations, carried through from errors that we {told} on published yields:"
     parts = []
     for one in errors.spread.errors:
         covered = one.elements if isinstance(one.elements, str) else ", ".join(one.elements)

@@ -444,3 +444,25 @@ def test_help_loads_nothing_heavy():
     done = subprocess.run([sys.executable, "-c", code], capture_output=True, text=True, timeout=120)
     assert done.stderr.strip() == "[]"
     assert "weigh" in done.stdout
+
+
+@pytest.mark.parametrize(
+    ("change", "shows"),
+    [
+        ("core-collapse=limongi-chieffi-2018-R-v150", "limongi-chieffi-2018-R-v150"),
+        ("imf=salpeter-1955", "salpeter-1955"),
+        ("agb=marigo-2001+doherty-2014", "marigo-2001"),
+    ],
+)
+def test_one_command_swaps_a_yield_set(change, shows):
+    text = run("weigh", "--species", "C,O", "--with", change, "--no-figures")
+    assert shows in text and text != run("weigh", "--species", "C,O", "--no-figures")
+    assert json.loads(run("weigh", "--species", "C,O", "--with", change, "--json")) != json.loads(
+        run("weigh", "--species", "C,O", "--json")
+    )
+
+
+def test_swaps_that_can_not_be_made_are_refused():
+    assert "did you mean" in refused("weigh", "--with", "core-colapse=kobayashi-2006")
+    assert "gives 2 choices" in refused("weigh", "--with", "imf=salpeter-1955,chabrier-2003")
+    assert "isn't a swap" in refused("weigh", "--with", "imf")

@@ -72,7 +72,7 @@ def test_shares_of_ranges_sum_to_a_hundred():
 
 
 def test_json_is_all_that_is_printed_and_sums():
-    told = json.loads(run("leverage", "--elements", "O", "--age", "10 Myr, 13.8 Gyr", "--net", "--json"))
+    told = json.loads(run("leverage", "--elements", "O", "--ages", "10 Myr, 13.8 Gyr", "--net", "--json"))
     assert told["ages_yr"] == [1e7, 13.8e9] and told["convention"] == "net"
     made = sum(np.array(told["contribution"][s]["O"]).sum(axis=1) for s in told["sources"])
     born = sum(np.array(told["birth_composition"][s]["O"]) for s in told["sources"])
@@ -83,7 +83,7 @@ def test_json_is_all_that_is_printed_and_sums():
 
 
 def test_young_population_says_that_nothing_is_made():
-    text = run("leverage", "-e", "Fe", "--age", "1 Myr")
+    text = run("leverage", "-e", "Fe", "--ages", "1 Myr")
     assert "Fe: no published model makes any of it by then." in text
     assert "not drawn: leverage-by-mass: nothing of Fe is made" in text
 
@@ -104,7 +104,7 @@ def test_own_population_file_and_its_elements():
         (["-e", "U"], "no set of the population follows U"),
         (["-e", ","], "--elements names nothing"),
         (["--top", "0"], "give 1 or more"),
-        (["--age", "-3 Myr"], "age is negative"),
+        (["--ages", "-3 Myr"], "age is negative"),
         (["nowhere.toml"], "there is no such file"),
     ],
 )

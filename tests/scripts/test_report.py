@@ -93,7 +93,7 @@ def test_refuses_in_one_line_and_writes_nothing():
         (["--swap", "imf=salpeter-1966"], "salpeter-1955"),
         (["--spread", "nowhere.toml"], "nowhere.toml: there is no such file"),
         (["-o", "a-file"], "a-file: this isn't a folder"),
-        (["-o", "theirs"], "theirs/report.html: this is no page of steelyard's, and isn't replaced"),
+        (["-o", "theirs"], "theirs/report.html: this is no file of steelyard's, and isn't replaced"),
         (["--colour"], "no such option"),
     ):
         assert told in refused(*args)

@@ -12,6 +12,7 @@ import pytest
 
 from steelyard.integrate import DelayedSource, Edges, Population, StellarSource
 from steelyard.integrate.popfile import default_population, population_from_dict
+from steelyard.integrate.provenance import made_by
 from steelyard.integrate.reporting import report, to_html, write_html
 from steelyard.integrate.reporting.choices import USUAL, usual_swaps
 from steelyard.integrate.reporting.gathering import CHOICE
@@ -209,7 +210,8 @@ def test_what_a_user_names_is_text():
     bad = "<img src=x onerror=alert(1)>\"'&"
     late = DelayedSource(bad, ["nomoto-1997-w7"], 1e-3, "maoz-graur-2017")
     stars = Population(0.02, [StellarSource("core-collapse", ["kobayashi-2006"]), late], species=["O", "Fe"])
-    tree = Tree(to_html(report(stars, command=f"steelyard report {bad}")))
+    with made_by(f"report {bad}"):
+        tree = Tree(to_html(report(stars)))
     assert not tree.named("img")
     assert bad in "".join(one[2] for one in tree.named("td", "th"))
     assert not any(key.startswith("on") for _, given, _ in tree.all for key in given)
