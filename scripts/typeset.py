@@ -10,9 +10,10 @@ import typer
 
 from steelyard.integrate.popfile import told
 from steelyard.integrate.population import Population
-from steelyard.integrate.provenance import FORMAT, replace_file
+from steelyard.integrate.provenance import FORMAT
 from steelyard.scripts import given, terminal
 from steelyard.yields.errors import InputError, nearest
+from steelyard.yields.whole import replace_file
 
 if TYPE_CHECKING:
     from steelyard.integrate.typesetting import PaperTable

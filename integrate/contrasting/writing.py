@@ -8,8 +8,10 @@ from importlib.metadata import version
 from pathlib import Path
 from typing import TYPE_CHECKING
 
+from steelyard.yields.whole import replace_file
+
 from .. import provenance
-from ..provenance import replace_file, summary
+from ..provenance import summary
 from .compare import Contrast
 from .telling import Row, rows
 

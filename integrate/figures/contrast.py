@@ -9,12 +9,12 @@ import numpy as np
 from numpy.typing import NDArray
 
 from steelyard.yields.errors import InputError
+from steelyard.yields.figures.style import GREY, PAGE, SMALL, TEXT, looks, style
 
 from ..contrasting import Contrast
 from ..contrasting.compare import OVER
 from ..contrasting.telling import singles
 from ..contrasting.writing import origin
-from .style import GREY, PAGE, SMALL, TEXT, looks, style
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes

@@ -9,13 +9,14 @@ import numpy as np
 from numpy.typing import NDArray
 
 from steelyard.yields.errors import InputError
+from steelyard.yields.figures.style import COLUMN, GREY, MSUN, PAGE, SMALL, TEXT, label, legend, looks, style
 from steelyard.yields.nuclides import parse
 
 from ..leverage import Leverage, Profile
 from ..results import Convention
 from ..sources import EDGE_ABOVE, EDGE_BELOW, JOIN_POLICIES
+from .canvas import canvas
 from .over_time import CHOICE
-from .style import COLUMN, GREY, MSUN, PAGE, SMALL, TEXT, canvas, label, legend, looks, style
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes

@@ -9,10 +9,23 @@ import numpy as np
 from numpy.typing import NDArray
 
 from steelyard.yields.errors import InputError
+from steelyard.yields.figures.style import (
+    COLUMN,
+    GREY,
+    MSUN,
+    PAGE,
+    SMALL,
+    SUM,
+    TEXT,
+    label,
+    legend,
+    looks,
+    style,
+)
 from steelyard.yields.nuclides import parse
 
 from ..results import Convention, PopulationYields
-from .style import COLUMN, GREY, MSUN, PAGE, SMALL, SUM, TEXT, canvas, label, legend, looks, style
+from .canvas import canvas
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes

@@ -10,11 +10,12 @@ from numpy.typing import NDArray
 
 from steelyard.yields.composition import mixture
 from steelyard.yields.errors import InputError
+from steelyard.yields.figures.style import COLUMN, GREY, PAGE, SMALL, SUM, Look, label, legend, looks, style
 from steelyard.yields.nuclides import parse
 from steelyard.yields.units import plain
 
 from ..results import PopulationYields
-from .style import COLUMN, GREY, PAGE, SMALL, SUM, Look, canvas, label, legend, looks, style
+from .canvas import canvas
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes

@@ -11,13 +11,14 @@ import numpy as np
 from numpy.typing import NDArray
 
 from steelyard.yields.errors import InputError
+from steelyard.yields.figures.style import COLUMN, GREY, MSUN, PAGE, SMALL, TEXT, legend, style
 from steelyard.yields.nuclides import parse
 from steelyard.yields.units import plain
 
 from ..population import Population
 from ..results import PopulationYields
 from ..scatter import ScatterLaw, scatter
-from .style import COLUMN, GREY, MSUN, PAGE, SMALL, TEXT, canvas, legend, style
+from .canvas import canvas
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes

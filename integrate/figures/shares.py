@@ -7,11 +7,11 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from steelyard.yields.errors import InputError
+from steelyard.yields.figures.style import GREY, PAGE, SMALL, TEXT, looks, style
 
 from ..contrasting.writing import origin
 from ..shares import Shares
 from .contrast import FEWEST, colours
-from .style import GREY, PAGE, SMALL, TEXT, looks, style
 
 if TYPE_CHECKING:
     from matplotlib.figure import Figure

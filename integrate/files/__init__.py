@@ -3,7 +3,7 @@
 Every file carries the population that made it, and is replaced whole or not at all.
 """
 
-from ..provenance import policies, provenance, replace_file, summary
+from ..provenance import policies, provenance, summary
 from .again import agrees
 from .csv import write_csv
 from .formats import FORMATS, format_of, read_stored, write_as
@@ -19,7 +19,6 @@ __all__ = [
     "provenance",
     "read_hdf5",
     "read_stored",
-    "replace_file",
     "stored",
     "summary",
     "write_as",

@@ -8,7 +8,9 @@ from pathlib import Path
 
 import numpy as np
 
-from ..provenance import provenance, replace_file
+from steelyard.yields.whole import replace_file
+
+from ..provenance import provenance
 from ..results import PopulationYields
 
 

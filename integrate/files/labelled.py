@@ -14,8 +14,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from steelyard.yields.errors import InputError
-
-from ..provenance import replace_file
+from steelyard.yields.whole import replace_file
 
 if TYPE_CHECKING:
     import h5py

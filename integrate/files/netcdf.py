@@ -9,8 +9,8 @@ from typing import Any
 import numpy as np
 
 from steelyard.yields.errors import InputError
+from steelyard.yields.whole import replace_file
 
-from ..provenance import replace_file
 from .layout import SCALES, StoredYields, gathered
 
 #: lists of text are lines of one attribute

@@ -12,8 +12,8 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from steelyard.yields.errors import InputError
+from steelyard.yields.whole import replace_file
 
-from ..provenance import replace_file
 from .columns import NAMES, ROWS, UNITS, as_text, filled, from_text, unreadable
 from .labelled import Entry
 from .layout import DATASETS, SCALES, Array, StoredYields, gathered

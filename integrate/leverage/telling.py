@@ -10,7 +10,9 @@ from typing import Any
 
 import numpy as np
 
-from ..provenance import provenance, replace_file
+from steelyard.yields.whole import replace_file
+
+from ..provenance import provenance
 from ..results import Convention
 from .nodes import positions
 from .ranking import BIRTH, Contributor, Leverage, share_of

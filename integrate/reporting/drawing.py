@@ -6,7 +6,8 @@ import io
 import re
 from typing import TYPE_CHECKING
 
-from ..figures.style import style
+from steelyard.yields.figures.style import style
+
 from .markup import Markup, element
 
 if TYPE_CHECKING:

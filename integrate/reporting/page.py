@@ -4,7 +4,9 @@ from __future__ import annotations
 
 from pathlib import Path
 
-from ..provenance import FORMAT, attributes, replace_file, summary
+from steelyard.yields.whole import replace_file
+
+from ..provenance import FORMAT, attributes, summary
 from ..typesetting import digits as rounding
 from .gathering import Report
 from .markup import Markup, element, join

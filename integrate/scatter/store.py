@@ -10,8 +10,10 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
+from steelyard.yields.whole import replace_file
+
 from ..files.labelled import Entry, attach, beside, put
-from ..provenance import attributes, provenance, replace_file
+from ..provenance import attributes, provenance
 from .result import LEVELS, ScatteredYields
 
 if TYPE_CHECKING:

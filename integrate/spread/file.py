@@ -10,9 +10,10 @@ from pathlib import Path
 from typing import Any
 
 from steelyard.yields.errors import InputError
+from steelyard.yields.whole import replace_file
 
 from ..popvalues import as_list, as_number, as_table, as_tables, as_word, require, short, told
-from ..provenance import provenance, replace_file
+from ..provenance import provenance
 from .propagation import Spread, YieldErrors
 from .stated import StatedError
 

@@ -13,9 +13,9 @@ from matplotlib.text import Text
 
 from steelyard.integrate import DelayedSource, Edges, Join, Population, StellarSource
 from steelyard.integrate.figures import production_pattern, save, yields_over_time
-from steelyard.integrate.figures.style import looks
 from steelyard.yields.composition import mixture
 from steelyard.yields.errors import InputError
+from steelyard.yields.figures.style import looks
 
 # Okabe & Ito 2008, "Color universal design", from memory
 OKABE_ITO = {

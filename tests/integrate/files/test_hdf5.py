@@ -8,9 +8,10 @@ import pandas as pd
 import pytest
 
 from steelyard.integrate import DelayedSource, Join, Population, StellarSource
-from steelyard.integrate.files import agrees, read_hdf5, replace_file, write_csv, write_hdf5
+from steelyard.integrate.files import agrees, read_hdf5, write_csv, write_hdf5
 from steelyard.integrate.popfile import population_from_dict
 from steelyard.yields.errors import InputError
+from steelyard.yields.whole import replace_file
 
 AGES = ("5 Myr", "30 Myr", "1 Gyr", "13.8 Gyr")
 SCALES = ("metallicity", "time", "source", "species", "remnant_kind", "event")

@@ -14,15 +14,13 @@ from dataclasses import dataclass
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
-from steelyard.yields.errors import InputError, nearest
-
-from ..provenance import provenance, replace_file
+from ..errors import InputError, nearest
+from ..whole import replace_file
 
 if TYPE_CHECKING:
     from matplotlib.artist import Artist
     from matplotlib.figure import Figure
 
-    from ..results import PopulationYields
 
 #: inches: one and two columns of a journal page, 88 and 180 mm
 COLUMN = 88 / 25.4
@@ -149,12 +147,12 @@ def label(source: str) -> str:
     return _NAMES.get(source, source).replace("$", r"\$")
 
 
-def canvas(width: float, height: float, result: PopulationYields, title: str) -> Figure:
-    """Return an empty figure, in inches, that knows which result it shows."""
+def canvas(width: float, height: float, title: str, description: str = "") -> Figure:
+    """Return an empty figure, in inches, that carries a title and where it comes from into its file."""
     from matplotlib.figure import Figure
 
     figure = Figure(figsize=(width, height), layout="constrained")
-    figure.provenance = (title, "\n".join(provenance(result)))
+    figure.provenance = (title, description)
     return figure
 
 
@@ -180,8 +178,8 @@ def legend(figure: Figure, entries: Sequence[tuple[Artist | tuple[Artist, ...], 
 def save(figure: Figure, path: str | Path) -> None:
     """Write a figure to a file of the kind its ending names.
 
-    The same figure gives the same bytes: no dates are written. The population it shows
-    stands whole in the file's own description, where the figure is one of ours.
+    The same figure gives the same bytes: no dates are written. Where a figure of ours
+    comes from stands whole in the file's own description.
 
     Parameters
     ----------
