@@ -47,7 +47,7 @@ def command(
     output: str = typer.Option(
         "", "--output", "-o", metavar="DIR", help="Folder for the files. Default: the current one."
     ),
-    figures: bool = typer.Option(True, "--figures/--no-figures", help="Draw the figure, or don't."),
+    figures: bool = typer.Option(True, "--figures/--no-figures", help="Draw the two figures, or don't."),
     json: bool = typer.Option(
         False, "--json", help="Print JSON only; files are written only where --output says so."
     ),
@@ -57,7 +57,8 @@ def command(
     A model makes its weight times what its paper prints for it. The rest is birth composition, which
     no table prints: winds that a set doesn't list, and what stars return unchanged. All parts sum to
     the yield. x2 and x1/2 say how far the yield moves, in dex, where one model's figure is wrong by a
-    factor of 2. Writes leverage.csv (every part by source) and, as .png and .pdf, leverage-by-mass.
+    factor of 2. Writes leverage.csv (every part by source) and, as .png and .pdf, leverage-by-mass
+    and mass-function-and-weights: how many stars each model stands for.
 
     \b
     Examples:
@@ -74,7 +75,7 @@ def command(
         found = leverage(replace(population, species=names, ages=wanted))
     convention: Convention = "net" if net else "total"
     written = []
-    undrawn = ""
+    undrawn: list[str] = []
     if output or not json:
         with terminal.slow("writing"):
             written, undrawn = _write(found, names, convention, Path(output or "."), figures)
@@ -85,8 +86,8 @@ def command(
         _print(found, names, convention, top)
     print()
     print("written: " + ", ".join(str(path) for path in written))
-    if undrawn:
-        print(f"not drawn: {undrawn}")
+    for why in undrawn:
+        print(f"not drawn: {why}")
 
 
 def _elements(population: Population, asked: Sequence[str]) -> list[str]:
@@ -100,26 +101,35 @@ def _elements(population: Population, asked: Sequence[str]) -> list[str]:
 
 def _write(
     found: Leverage, names: Sequence[str], convention: Convention, where: Path, figures: bool
-) -> tuple[list[Path], str]:
-    """Write all files; the paths of those written, and why the figure isn't among them."""
-    figure, undrawn = None, ""
-    if figures:
-        from steelyard.integrate.figures.leverage import contribution_by_mass
-
-        try:
-            figure = contribution_by_mass(found, names[:9], _last(found), convention)
-        except InputError as error:  # of a young population
-            undrawn = f"leverage-by-mass: {error}"
+) -> tuple[list[Path], list[str]]:
+    """Write all files; the paths of those written, and why a figure isn't among them."""
+    drawn, undrawn = _draw(found, names, convention) if figures else ({}, [])
     where = terminal.folder(where)
     written = [where / "leverage.csv"]
     write_csv(found, written[0], names, convention)
-    if figure is not None:
+    for name, figure in drawn.items():
         from steelyard.integrate.figures import save
 
         for suffix in (".png", ".pdf"):
-            written.append(where / f"leverage-by-mass{suffix}")
+            written.append(where / f"{name}{suffix}")
             save(figure, written[-1])
     return written, undrawn
+
+
+def _draw(found: Leverage, names: Sequence[str], convention: Convention) -> tuple[dict[str, Any], list[str]]:
+    from steelyard.integrate.figures import contribution_by_mass, mass_function_and_weights
+
+    drawn: dict[str, Any] = {}
+    undrawn = []
+    for name, draw in (
+        ("leverage-by-mass", lambda: contribution_by_mass(found, names[:9], _last(found), convention)),
+        ("mass-function-and-weights", lambda: mass_function_and_weights(found, _last(found))),
+    ):
+        try:
+            drawn[name] = draw()
+        except InputError as error:  # of a young population
+            undrawn.append(f"{name}: {error}")
+    return drawn, undrawn
 
 
 def _last(found: Leverage) -> int:

@@ -18,6 +18,9 @@ def command(
     kind: str = typer.Option(
         "", help="Only sets of this kind: agb, core-collapse or thermonuclear.", metavar="KIND"
     ),
+    figure: str = typer.Option(
+        "", metavar="FILE", help="Draw at which initial masses and metallicities the sets have models."
+    ),
     json: bool = typer.Option(False, "--json", help="Print JSON: a list with one object for each set."),
 ) -> None:
     """List the yield sets there are, with the range of their models.
@@ -30,6 +33,7 @@ def command(
     \b
     Examples:
       steelyard sets --kind core-collapse
+      steelyard sets --figure coverage.pdf
       steelyard sets --json
     """
     with warnings.catch_warnings(record=True) as caught:
@@ -41,6 +45,10 @@ def command(
     if kind and kind not in kinds:
         raise InputError(f"there are no sets of kind {kind!r}", where="--kind", mend=nearest(kind, kinds))
     chosen = [g for g in grids if not kind or g.kind == kind]
+    if figure:
+        from steelyard.yields.figures import coverage_map, save
+
+        save(coverage_map(chosen), figure)
     if json:
         terminal.print_json([about(g) for g in chosen])
         return
@@ -63,6 +71,8 @@ def command(
             )
         made.add_section()
     terminal.console().print(made)
+    if figure:
+        print(f"\nwritten: {figure}")
 
 
 def about(grid: YieldSet) -> dict[str, Any]:

@@ -24,6 +24,14 @@ ACCOUNTS = ("ejected", "remnant", "wind", "rest")
 
 Convention = Literal["total", "net"]
 
+OTHERS = typer.Option(
+    [],
+    "--against",
+    metavar="SET",
+    help="Another set, to stand beside this one at the metallicity named; may be given often.",
+    show_default=False,
+)
+
 
 def command(
     set: str = typer.Argument(..., metavar="SET", help="Id of a yield set; `steelyard sets` lists them."),
@@ -39,6 +47,8 @@ def command(
     convention: str = typer.Option(
         "", metavar="total|net", help="Total or net yields. Default: what the paper prints."
     ),
+    others: list[str] = OTHERS,
+    figure: str = typer.Option("", metavar="FILE", help="Draw the sets against each other."),
     json: bool = typer.Option(False, "--json", help="Print everything as JSON."),
     csv: bool = typer.Option(False, "--csv", help="Print the yields as CSV, a line a model."),
 ) -> None:
@@ -47,16 +57,27 @@ def command(
     M is the initial mass, "ejected" all mass lost until death, "wind" the part of it that the paper
     doesn't list, "rest" the part that belongs to no species the set follows.
 
+    With --against, prints what each set says of stars of the same initial mass and metallicity, and
+    the difference in dex. A tilde marks values between a set's models; outside them there are none.
+
     \b
     Examples:
       steelyard show karakas-2010
       steelyard show kobayashi-2006 --metallicity 0.02 --species O,Mg,Fe56
       steelyard show doherty-2014 --convention net --csv
+      steelyard show karakas-2010 --against marigo-2001 -Z 0.008 --species C,N
     """
     grid = load(set)
     if json and csv:
         raise InputError("--json and --csv exclude each other", mend="choose one")
     chosen = _convention(grid, convention)
+    if others:
+        from steelyard.scripts import against
+
+        against.command(set, others, metallicity, species, convention or "total", figure, json, csv)
+        return
+    if figure:
+        raise InputError("one set is not drawn", where="--figure", mend="name another one with --against")
     slices = grid.slices if not metallicity else (_slice(grid, plain(metallicity, "", "--metallicity")),)
     names = _names(grid, species, everything=json or csv)
     if json:

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import json
 import os
+import re
 import sys
 import threading
 from collections.abc import Iterable, Iterator, Sequence
@@ -37,12 +38,28 @@ def console(stderr: bool = False) -> Console:
         # rich would still print bold
         settings["color_system"] = None
 
+    if not stream.isatty():
+        stream = _Trimmed(stream)
+
     class Plain(Console):
         def on_broken_pipe(self) -> None:
             # rich would end the process with status 1
             raise BrokenPipeError
 
     return Plain(file=stream, **settings)
+
+
+class _Trimmed:
+    """A stream without the blanks that fill up a table's last column."""
+
+    def __init__(self, stream: Any) -> None:
+        self._stream = stream
+
+    def write(self, text: str) -> int:
+        return int(self._stream.write(re.sub(r" +$", "", text, flags=re.MULTILINE)))
+
+    def __getattr__(self, name: str) -> Any:
+        return getattr(self._stream, name)
 
 
 def table(*headings: str, left: int = 1, title: str = "", gap: int = 2) -> Table:

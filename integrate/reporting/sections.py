@@ -212,6 +212,7 @@ def contrasted(found: Report) -> Markup:
 def leaned_on(found: Report) -> Markup:
     """Which models the yields rest on."""
     from ..figures.leverage import contribution_by_mass
+    from ..figures.mass_function import mass_function_and_weights
 
     of = found.leverage
     cells = []
@@ -236,6 +237,13 @@ def leaned_on(found: Report) -> Markup:
                 "leverage",
                 "Share of each yield made per dex of initial mass, with the published models marked.",
                 "Which initial masses make each yield.",
+            ),
+            _drawn(
+                lambda: mass_function_and_weights(of, 0),
+                "weights",
+                "Stars and mass formed per dex of initial mass, and below it how many stars each model stands"
+                " for.",
+                "The mass function, and the weight that it gives to each model.",
             ),
         ],
         "\n",

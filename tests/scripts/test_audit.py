@@ -68,7 +68,7 @@ def test_a_file_is_audited_by_its_layout(table):
     [
         (["karakas-201"], "did you mean karakas-2010"),
         (["karakas-2010", "--severity", "warnings"], "did you mean warning"),
-        (["karakas-2010", "--figure", "a.doc"], "use .png, .pdf or .svg"),
+        (["karakas-2010", "--figure", "a.doc"], "known: pdf, png, svg"),
         (["karakas-2010", "doherty-2014", "--figure", "a.png"], "audit one at a time"),
         ([__file__], "name it with --layout"),
     ],

@@ -466,3 +466,49 @@ def test_swaps_that_can_not_be_made_are_refused():
     assert "did you mean" in refused("weigh", "--with", "core-colapse=kobayashi-2006")
     assert "gives 2 choices" in refused("weigh", "--with", "imf=salpeter-1955,chabrier-2003")
     assert "isn't a swap" in refused("weigh", "--with", "imf")
+
+
+def test_sets_against_each_other():
+    text = run(
+        "show",
+        "kobayashi-2006",
+        "--against",
+        "limongi-chieffi-2018-R-v000",
+        "-Z",
+        "0.01",
+        "--species",
+        "O,Ba",
+    )
+    assert "Z = 0.004 and 0.02, between" in text and "kobayashi-2006 doesn't follow Ba" in text
+    row = next(line.split() for line in text.splitlines() if line.split()[:1] == ["18"])
+    assert row[2].endswith("~") and float(row[3]) == pytest.approx(
+        np.log10(float(row[2].rstrip("~")) / float(row[1])), abs=0.006
+    )
+    told = json.loads(
+        run("show", "karakas-2010", "--against", "marigo-2001", "-Z", "0.008", "--species", "C", "--json")
+    )
+    lines = run("show", "karakas-2010", "--against", "marigo-2001", "-Z", "0.008", "--species", "C", "--csv")
+    rows = [line.split(",") for line in lines.splitlines()[1:]]
+    values = [v for v in told["yields"]["marigo-2001"]["C"] if v is not None]
+    assert [float(r[4]) for r in rows if r[2] == "marigo-2001"] == values
+
+
+@pytest.mark.parametrize(
+    ("arguments", "says"),
+    [
+        (("--against", "nobody-2006", "-Z", "0.01"), "isn't known"),
+        (("--against", "kobayashi-2006", "-Z", "0.01"), "each once"),
+        (("--against", "nomoto-1997-w7", "-Z", "0.01"), "single events"),
+        (("--against", "marigo-2001"), "at one metallicity"),
+        (("--against", "marigo-2001", "-Z", "0.01", "--figure", "x.doc"), "can't be written as 'doc'"),
+        (("--figure", "x.pdf"), "--against"),
+    ],
+)
+def test_comparisons_that_can_not_be_made_are_refused(arguments, says):
+    assert says in refused("show", "kobayashi-2006", *arguments)
+
+
+def test_coverage_of_the_sets_is_drawn():
+    assert "written: map.svg" in run("sets", "--kind", "agb", "--figure", "map.svg")
+    assert "karakas-2010" in Path("map.svg").read_text()
+    assert "none of the sets" in refused("sets", "--kind", "thermonuclear", "--figure", "x.pdf")

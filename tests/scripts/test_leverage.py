@@ -57,7 +57,8 @@ def test_table_sentences_and_files():
     assert sum(line.split()[:1] == ["sum"] and "100.0 %" in line for line in lines) == 2
     assert any(line.startswith("thermonuclear.number") and "+0.53" in line for line in lines)
     made = sorted(path.name for path in Path("out").iterdir())
-    assert made == ["leverage-by-mass.pdf", "leverage-by-mass.png", "leverage.csv"]
+    figures = ["leverage-by-mass", "mass-function-and-weights"]
+    assert made == sorted(["leverage.csv", *(f"{one}.{kind}" for one in figures for kind in ("pdf", "png"))])
     assert Path("out/leverage-by-mass.png").read_bytes()[:4] == b"\x89PNG"
 
 

@@ -6,7 +6,8 @@ from collections.abc import Sequence
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
-from ..errors import InputError
+from ..figures.style import GREY, MSUN, PAGE, SMALL, TEXT, canvas, style
+from ..figures.style import save as write
 from ..grid import YieldSet
 from ..nuclides import Species, is_stable, symbols
 from .finding import SEVERITIES, Finding, Severity
@@ -18,16 +19,16 @@ if TYPE_CHECKING:
 
 #: colour and marker of a severity; told apart without colour too
 LOOK: dict[Severity, tuple[str, str]] = {
-    "error": ("#b2182b", "s"),
-    "warning": ("#d95f02", "D"),
-    "note": ("#3b6fb6", "o"),
+    "error": ("#D55E00", "s"),
+    "warning": ("#CC79A7", "D"),
+    "note": ("#0072B2", "o"),
 }
-FOLLOWED, RADIOACTIVE = "#4d4d4d", "#8c6bb1"
+FOLLOWED, RADIOACTIVE = GREY, "#E69F00"
 
 #: findings that get a line under the picture; the others are counted
 MOST_LINES = 16
 
-_LETTERS = 150
+_LETTERS = 125
 
 
 def draw(grid: YieldSet, findings: Sequence[Finding]) -> Figure:
@@ -43,28 +44,29 @@ def draw(grid: YieldSet, findings: Sequence[Finding]) -> Figure:
     matplotlib.figure.Figure
         Not shown, and unknown to pyplot.
     """
-    from matplotlib.figure import Figure
-
     numbered = list(enumerate(findings, start=1))
     shown = numbered[:MOST_LINES]
     lines: list[tuple[str, str, str]] = [line for n, f in shown for line in _lines(n, f)]
     if len(numbered) > len(shown):
         lines.append(
-            ("", f"… and {len(numbered) - len(shown)} more, numbered on in the list of the audit", "0.25")
+            ("", f"… and {len(numbered) - len(shown)} more, numbered on in the list of the audit", GREY)
         )
-    models = 1.1 + 0.42 * max(len(grid.slices), 2)
-    height = 1.0 + 0.105 * (grid.parsed[-1].Z + 2)
-    chart = 1.9 if grid.follows_elements else max(height, 2.0)
-    text = 0.17 * max(len(lines), 1) + 0.25
-    figure = Figure(figsize=(9.2, models + chart + text + 1.1), layout="constrained")
-    top, middle, bottom = figure.subplots(3, 1, height_ratios=[models, chart, text])
-    figure.suptitle(f"Audit of {grid.id}", x=0.012, ha="left", fontsize=12, fontweight="bold")
-    _models(top, grid, numbered)
-    if grid.follows_elements:
-        _elements(middle, grid)
-    else:
-        _nuclides(middle, grid)
-    _texts(bottom, lines)
+    models = 0.9 + 0.34 * max(len(grid.slices), 2)
+    height = 0.9 + 0.085 * (grid.parsed[-1].Z + 2)
+    chart = 1.5 if grid.follows_elements else max(height, 1.7)
+    text = 0.15 * max(len(lines), 1) + 0.2
+    with style():
+        figure = canvas(
+            PAGE, models + chart + text + 0.9, f"Audit of {grid.id}", f"{grid.id} sha256 {grid.checksum}"
+        )
+        top, middle, bottom = figure.subplots(3, 1, height_ratios=[models, chart, text])
+        figure.suptitle(f"Audit of {grid.id}", x=0.012, ha="left", fontsize=TEXT + 1, fontweight="bold")
+        _models(top, grid, numbered)
+        if grid.follows_elements:
+            _elements(middle, grid)
+        else:
+            _nuclides(middle, grid)
+        _texts(bottom, lines)
     return figure
 
 
@@ -86,26 +88,18 @@ def save(grid: YieldSet, findings: Sequence[Finding], path: str | Path) -> Path:
     InputError
         The ending isn't one of these, or the file can't be written.
     """
-    path = Path(path)
-    if path.suffix.lower() not in (".png", ".pdf", ".svg"):
-        raise InputError(
-            f"no picture format ends in {path.suffix!r}", where=str(path), mend="use .png, .pdf or .svg"
-        )
-    try:
-        draw(grid, findings).savefig(path, dpi=150)
-    except OSError as error:
-        raise InputError(f"can't be written: {error.strerror}", where=str(path)) from None
-    return path
+    write(draw(grid, findings), path)
+    return Path(path)
 
 
 def _models(axes: Axes, grid: YieldSet, numbered: Sequence[tuple[int, Finding]]) -> None:
     """Models as dots, a line a metallicity, each finding as a numbered mark above its model."""
     if grid.event:
         axes.set_axis_off()
-        axes.text(0, 0.5, "one event of a delayed source: no grid of initial masses", va="center", fontsize=9)
+        axes.text(0, 0.5, "one event of a delayed source: no initial masses", va="center", fontsize=TEXT)
         return
     for k, one in enumerate(grid.slices):
-        axes.plot(one.mass, [k] * len(one.mass), ".", color="0.35", ms=6, zorder=2)
+        axes.plot(one.mass, [k] * len(one.mass), ".", color=GREY, ms=6, zorder=2)
         axes.axhline(k, color="0.9", lw=0.8, zorder=0)
     level = {z: k for k, z in enumerate(grid.metallicities)}
     at: dict[tuple[float, float], list[tuple[int, Finding]]] = {}
@@ -122,22 +116,25 @@ def _models(axes: Axes, grid: YieldSet, numbered: Sequence[tuple[int, Finding]])
             xytext=(0, 10),
             textcoords="offset points",
             ha="center",
-            fontsize=7.5,
+            fontsize=SMALL,
             color=colour,
         )
     for severity, (colour, marker) in LOOK.items():
         count = sum(f.severity == severity for _, f in numbered)
         name = severity if count == 1 else f"{severity}s"
         axes.plot([], [], marker, mfc="none", mec=colour, mew=1.6, ms=8, label=f"{count} {name}")
-    axes.legend(ncols=3, loc="lower right", bbox_to_anchor=(1, 1), frameon=False, fontsize=8, borderpad=0.1)
+    axes.legend(
+        ncols=3, loc="lower right", bbox_to_anchor=(1, 1), frameon=False, fontsize=SMALL, borderpad=0.1
+    )
     axes.set_xscale("log")
     axes.set_xlim(min(grid.masses) / 1.08, max(grid.masses) * 1.08)
     axes.set_ylim(-0.6, len(grid.slices) - 0.25)
     axes.set_yticks(range(len(grid.slices)), [f"{z:.4g}" for z in grid.metallicities])
     _mass_ticks(axes, grid.masses)
-    axes.set_xlabel("initial mass [Msun]")
-    axes.set_ylabel("metallicity Z")
+    axes.set_xlabel(f"Initial mass [{MSUN}]")
+    axes.set_ylabel("Metallicity Z")
     axes.spines[["top", "right"]].set_visible(False)
+    axes.tick_params(top=False, right=False, which="both")
 
 
 def _mass_ticks(axes: Axes, masses: Sequence[float]) -> None:
@@ -171,10 +168,11 @@ def _nuclides(axes: Axes, grid: YieldSet) -> None:
     for one in z:
         left = min(s.A - s.Z for s in drawn if s.Z == one)
         symbol = symbols()[one - 1] if one else "n"
-        axes.text(left - 0.7, one, symbol, ha="right", va="center", fontsize=6, color="0.25")
-    axes.set_xlabel("neutrons")
-    axes.set_ylabel("protons")
+        axes.text(left - 0.7, one, symbol, ha="right", va="center", fontsize=6, color=GREY)
+    axes.set_xlabel("Neutrons")
+    axes.set_ylabel("Protons")
     axes.spines[["top", "right"]].set_visible(False)
+    axes.tick_params(top=False, right=False, which="both")
     _key(axes, groups, "lower right")
 
 
@@ -189,7 +187,7 @@ def _elements(axes: Axes, grid: YieldSet) -> None:
         x, y = i % width, -(i // width)
         axes.add_patch(Rectangle((x + 0.05, y + 0.08), 0.9, 0.84, facecolor=face, edgecolor=edge, lw=0.7))
         colour = "0.35" if face == "white" else "white"
-        axes.text(x + 0.5, y + 0.5, one.name, ha="center", va="center", fontsize=7, color=colour)
+        axes.text(x + 0.5, y + 0.5, one.name, ha="center", va="center", fontsize=SMALL, color=colour)
     axes.set_xlim(0, width)
     axes.set_ylim(-(len(drawn) - 1) // width - 0.1, 1.75)
     axes.set_axis_off()
@@ -215,7 +213,7 @@ def _key(axes: Axes, groups: Sequence[tuple[Any, str, str, str]], place: str) ->
 
     handles = [Patch(facecolor=face, edgecolor=edge, label=label) for _, face, edge, label in groups]
     axes.legend(
-        handles=handles, loc=place, frameon=False, fontsize=8, ncols=1 if place == "lower right" else 3
+        handles=handles, loc=place, frameon=False, fontsize=SMALL, ncols=1 if place == "lower right" else 3
     )
 
 
@@ -232,10 +230,10 @@ def _lines(n: int, finding: Finding) -> list[tuple[str, str, str]]:
 def _texts(axes: Axes, lines: Sequence[tuple[str, str, str]]) -> None:
     axes.set_axis_off()
     if not lines:
-        lines = [("", "nothing found", "0.25")]
+        lines = [("", "nothing found", GREY)]
     step = 1 / len(lines)
     for i, (number, line, colour) in enumerate(lines):
-        place = {"va": "center", "fontsize": 7.5, "transform": axes.transAxes}
+        place = {"va": "center", "fontsize": SMALL, "transform": axes.transAxes}
         y = 1 - (i + 0.5) * step
         axes.text(-0.05, y, number, color=colour, fontweight="bold", ha="right", **place)
         axes.text(-0.04, y, line, color="0.2", **place)

@@ -74,6 +74,7 @@ _STYLE: dict[str, Any] = {
     "axes.linewidth": 0.6,
     "axes.unicode_minus": True,
     "axes.grid": False,
+    "axes.formatter.use_mathtext": True,
     "axes.facecolor": "white",
     "axes.edgecolor": "black",
     "axes.labelcolor": "black",
@@ -140,6 +141,28 @@ def looks(sources: Sequence[str]) -> dict[str, Look]:
     """
     others = [source for source in sources if source not in _KNOWN]
     return {s: _KNOWN[s] if s in _KNOWN else _FURTHER[others.index(s) % len(_FURTHER)] for s in sources}
+
+
+def distinct(count: int) -> list[Look]:
+    """Return as many looks as there are things of one kind to tell apart, from the first on.
+
+    Examples
+    --------
+    >>> len({(one.colour, one.marker) for one in distinct(12)})
+    12
+    """
+    base = [*_KNOWN.values(), *_FURTHER]
+    lines = [one.line for one in base]
+    markers = ("s", "o", "^", "v", "P", "X", "D", "<", ">", "p", "h", "*")
+    return [
+        Look(
+            base[k % len(base)].colour,
+            lines[(k + k // len(base)) % len(lines)],
+            markers[k % len(markers)],
+            "",
+        )
+        for k in range(count)
+    ]
 
 
 def label(source: str) -> str:

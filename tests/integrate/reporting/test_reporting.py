@@ -180,7 +180,7 @@ def test_is_built_for_keys_and_screen_readers(tree):
     assert len(tree.named("caption")) == len(tree.named("table")) > 5
     assert all(one[1]["scope"] in ("row", "col") for one in tree.named("th"))
     drawings = tree.named("svg")
-    assert len(drawings) == 4
+    assert len(drawings) == 5
     assert all(one[1]["role"] == "img" and one[1]["aria-labelledby"].endswith("-title") for one in drawings)
     for _, given, _ in tree.all:
         if given.get("class") == "scroll":
