@@ -22,11 +22,11 @@ COMMANDS = {
     "library": "List, remove or export admitted sets.",
     "weigh": "Weigh a population: yields by element, source and time.",
     "contrast": "Say how much of an answer is the choice of tables and laws.",
-    "leverage": "Tell which models, masses and parameters a population's yields rest on.",
-    "typeset": "Make a paper's table of yields: LaTeX, machine-readable, CSV, with notes and BibTeX.",
-    "handoff": "Write yields over metallicity and age to a file for another code.",
+    "leverage": "Tell which models and masses a population's yields rest on.",
+    "typeset": "Make a paper's table of yields, with notes and BibTeX.",
+    "handoff": "Write yields over metallicity and age for another code.",
     "report": "Make one HTML page that tells all of a population.",
-    "scatter": "Draw populations star by star: how far chance moves what they eject.",
+    "scatter": "Draw populations star by star: how far chance goes.",
 }
 
 # typer carries click inside itself, or beside itself in its older versions, and passes on this leaf only

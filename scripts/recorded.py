@@ -32,7 +32,9 @@ COMMANDS = {
 POPULATION, SPREAD = "population.toml", "spread.toml"
 
 #: options that an output doesn't depend on, or that are in its population already
-_APART = frozenset({"output", "bibtex", "json", "markdown", "methods", "template", "workers", "changes"})
+_APART = frozenset(
+    {"output", "bibtex", "json", "markdown", "methods", "explained", "schema", "workers", "changes"}
+)
 
 #: digits agree where figures differ by less than this of their value
 SAME = 1e-12

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterator, Sequence
+from json import dumps
 from pathlib import Path
 from typing import TYPE_CHECKING, Any, Literal
 
@@ -17,7 +18,7 @@ from steelyard.yields.errors import InputError
 if TYPE_CHECKING:
     from steelyard.integrate.spread import YieldErrors
 
-TEMPLATE = "population.toml"
+TEMPLATE, SCHEMA = "population.toml", "population.schema.json"
 
 #: columns; no table is wider
 WIDEST = 10_000
@@ -59,10 +60,16 @@ def command(
     json: bool = typer.Option(
         False, "--json", help="Print JSON only; files are written only where --output says so."
     ),
-    template: bool = typer.Option(
+    explained: bool = typer.Option(
         False,
         "--template",
         help=f"Write a population file with every key explained, to FILE (default {TEMPLATE}; - prints it).",
+    ),
+    schema: bool = typer.Option(
+        False,
+        "--schema",
+        help="Write the JSON Schema of population files, by which editors complete them, to FILE (default"
+        f" {SCHEMA}; - prints it).",
     ),
 ) -> int:
     """Weigh a stellar population: what it ejects by element, source and time, per Msun formed.
@@ -81,8 +88,8 @@ def command(
       steelyard weigh --with core-collapse=limongi-chieffi-2018-R-v150 -o other
       steelyard weigh --species C,O,Mg,Fe --spread assumed --no-figures
     """
-    if template:
-        _write_template(file, output)
+    if explained or schema:
+        _write_help(file, output, schema)
         return 0
     if file and _is_earlier(_origin(file)):
         if any((ages, metallicity, species, output, net, rate, spread, changes)):
@@ -151,15 +158,26 @@ def _again(path: Path, json: bool) -> int:
     return 0 if same else 1
 
 
-def _write_template(file: str, output: str) -> None:
+def _write_help(file: str, output: str, schema: bool) -> None:
+    """Write the template of a population file, or its schema."""
+    text, name = template(), TEMPLATE
+    if schema:
+        from steelyard.integrate.popfile.schema import population_schema
+
+        text, name = dumps(population_schema(), indent=2, ensure_ascii=False) + "\n", SCHEMA
     if file == "-":
-        print(template(), end="")
+        print(text, end="")
         return
-    path = Path(output or ".") / (file or TEMPLATE)
+    path = Path(output or ".") / (file or name)
     if output:
         terminal.folder(Path(output))
-    terminal.write_new(path, template())
-    print(f"written: {path}; `steelyard weigh {path}` weighs it")
+    terminal.write_new(path, text)
+    more = (
+        f"editors use it where a population file begins with #:schema ./{path}"
+        if schema
+        else f"`steelyard weigh {path}` weighs it"
+    )
+    print(f"written: {path}; {more}")
 
 
 def _write(

@@ -81,6 +81,10 @@ def write_votable(held: StoredYields, path: str | Path) -> None:
     for name, table in _tables(held).items():
         one = TableElement.from_table(made, table)
         one.name = name
+        for field in one.fields:
+            # the standard has the index first that runs fastest, astropy 8 writes the slowest first
+            if table[field.name].ndim > 2:
+                field.arraysize = "x".join(str(n) for n in reversed(table[field.name].shape[1:]))
         resource.tables.append(one)
     for field, (_, entry) in zip(resource.tables[0].fields, _columns(held), strict=True):
         field.description = entry.description

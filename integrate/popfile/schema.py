@@ -1,9 +1,9 @@
 """The JSON Schema of population files, by which editors complete keys and underline mistakes.
 
-``python -m steelyard.integrate.popfile.schema > population.schema.json`` writes it; a population file whose
-first line is ``#:schema ./population.schema.json`` is then checked by editors that read that line.
-Choices, keys and explanations are those of the reader and of the template; what only the reader can
-know, such as units and whether sets meet, it alone checks.
+``steelyard weigh --schema`` writes it to population.schema.json; a population file whose first line
+is ``#:schema ./population.schema.json`` is then checked by editors that read that line. Choices, keys
+and explanations are those of the reader and of the template; what only the reader can know, such as
+units and whether sets meet, it alone checks.
 """
 
 from __future__ import annotations
@@ -197,9 +197,3 @@ def _explanations(template: str) -> dict[str, str]:
             out[f"{where}.{key[1]}" if where else key[1]] = " ".join(comment)
         comment = []
     return {name: text for name, text in out.items() if text}
-
-
-if __name__ == "__main__":
-    import json
-
-    print(json.dumps(population_schema(), indent=2, ensure_ascii=False))

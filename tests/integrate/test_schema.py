@@ -2,11 +2,10 @@
 
 import copy
 import json
-import subprocess
-import sys
 import tomllib
 
 import pytest
+from typer.testing import CliRunner
 
 from steelyard.integrate.popfile import (
     default_population,
@@ -16,6 +15,7 @@ from steelyard.integrate.popfile import (
     template,
 )
 from steelyard.integrate.popfile.schema import population_schema
+from steelyard.scripts.main import app
 from steelyard.yields.errors import InputError
 
 jsonschema = pytest.importorskip("jsonschema")
@@ -129,14 +129,16 @@ def test_explains_keys_in_the_words_of_the_template():
     assert collapse["events_from"]["description"] == "Lowest initial mass that dies as a core-collapse event."
 
 
-def test_is_printed_and_named_in_a_comment():
-    out = subprocess.run(
-        [sys.executable, "-m", "steelyard.integrate.popfile.schema"],
-        capture_output=True,
-        text=True,
-        check=True,
+def test_is_printed_written_and_named_in_a_comment(tmp_path, monkeypatch):
+    monkeypatch.chdir(tmp_path)
+    runner = CliRunner()
+    out = runner.invoke(app, ["weigh", "-", "--schema"])
+    assert out.exit_code == 0 and json.loads(out.stdout) == population_schema()
+    told = runner.invoke(app, ["weigh", "--schema"]).stdout
+    assert (
+        told.startswith("written: population.schema.json; ") and "#:schema ./population.schema.json" in told
     )
-    assert json.loads(out.stdout) == population_schema()
+    assert json.loads((tmp_path / "population.schema.json").read_text()) == population_schema()
     # the line that names a schema is a comment to TOML
     hinted = f"#:schema ./population.schema.json\n{template()}"
     assert population_from_dict(tomllib.loads(hinted)).ages == default_population().ages

@@ -16,7 +16,7 @@ from steelyard.integrate.files.layout import DATASETS, SCALES
 from steelyard.integrate.handoff import handoff, write_handoff
 from steelyard.yields.errors import InputError
 
-SPECIES = ["H", "O", "Al26"]
+SPECIES = ["H", "O", "Al26", "Fe"]
 BY_ROW = ("metallicity", "time")
 
 
@@ -124,7 +124,10 @@ def test_votable_by_astropy(made, tmp_path):
     table = parse(tmp_path / "y.vot", verify="exception").get_first_table()
     assert {f.name: f.description for f in table.fields}["net"] == DATASETS["net"].description
     values = table.to_table()["net"]
-    assert np.array_equal(np.asarray(values).reshape(3, 2, 3, 3), stored(made.results).arrays["net"])
+    assert values.shape == (6, 3, 4)
+    assert np.array_equal(np.asarray(values).reshape(3, 2, 3, 4), stored(made.results).arrays["net"])
+    # VOTable 1.4 (IVOA 2019), section 2.2, from memory: the first index of arraysize runs fastest: species
+    assert {f.name: f.arraysize for f in table.fields}["net"] == "4x3"
     assert str(table.to_table()["total_rate"].unit) == "1 / yr"
 
 
@@ -145,7 +148,7 @@ def test_long_tables_by_astropy_and_pandas(made, form, tmp_path):
         np.asarray(table["remnants_black_hole"], dtype=float),
         flat(held | {"x": held["remnants"][..., 2]}, "x", BY_ROW),
     )
-    assert list(table["species"][:3]) == SPECIES
+    assert list(table["species"][:4]) == SPECIES
 
 
 def test_names_of_scales_are_those_of_every_format():
