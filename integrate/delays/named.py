@@ -24,18 +24,6 @@ from .forms import (
     read_limits,
 )
 
-__all__ = [
-    "FORMS",
-    "PRESETS",
-    "BrokenPowerLawDelay",
-    "Delay",
-    "ExponentialDelay",
-    "FunctionDelay",
-    "PowerLawDelay",
-    "TabulatedDelay",
-    "delay",
-]
-
 _NODES, _SHARES = np.polynomial.legendre.leggauss(16)
 _NODES, _SHARES = (_NODES + 1.0) / 2.0, _SHARES / 2.0
 

@@ -2,16 +2,15 @@
 
 from __future__ import annotations
 
-import csv
-import io
+from collections.abc import Iterator
 from pathlib import Path
+from typing import Any
 
 import numpy as np
 
-from steelyard.yields.whole import replace_file
-
 from ..provenance import provenance
 from ..results import PopulationYields
+from ..tidy import write_tidy
 
 
 def write_csv(result: PopulationYields, path: str | Path) -> None:
@@ -35,16 +34,14 @@ def write_csv(result: PopulationYields, path: str | Path) -> None:
     and followed (0 where the source doesn't follow the species: missing, not zero). Numbers
     have as many digits as it takes to read them back exactly.
     """
-    text = io.StringIO()
-    for line in provenance(result):
-        text.write(f"# {line}".rstrip() + "\n")
-    table = csv.writer(text, lineterminator="\n")
     names = ("total", "net", "total_rate", "net_rate")
-    table.writerow(["age_yr", "source", "species", *names, "followed"])
     values = np.stack([getattr(result, name) for name in names], axis=-1)
-    for t, age in enumerate(result.ages.tolist()):
-        for i, source in enumerate(result.sources):
-            rows = values[i, t].tolist()
-            for species, row, has in zip(result.species, rows, result.followed[i].tolist(), strict=True):
-                table.writerow([repr(age), source, species, *map(repr, row), int(has)])
-    replace_file(path, text.getvalue().encode())
+
+    def rows() -> Iterator[list[Any]]:
+        for t, age in enumerate(result.ages.tolist()):
+            for i, source in enumerate(result.sources):
+                figures, followed = values[i, t].tolist(), result.followed[i].tolist()
+                for species, row, has in zip(result.species, figures, followed, strict=True):
+                    yield [age, source, species, *row, int(has)]
+
+    write_tidy(path, provenance(result), ["age_yr", "source", "species", *names, "followed"], rows())

@@ -2,18 +2,15 @@
 
 from __future__ import annotations
 
-import csv
-import io
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
 from pathlib import Path
 from typing import Any
 
 import numpy as np
 
-from steelyard.yields.whole import replace_file
-
 from ..provenance import provenance
 from ..results import Convention
+from ..tidy import write_tidy
 from .nodes import positions
 from .ranking import BIRTH, Contributor, Leverage, share_of
 
@@ -124,28 +121,26 @@ def write_csv(
     yield of all sources), printed (Msun). Birth composition has no metallicity, mass and
     printed figure; events have no metallicity and mass. The amounts sum to the yield.
     """
-    result, text = found.result, io.StringIO()
-    for line in provenance(result):
-        text.write(f"# {line}".rstrip() + "\n")
-    table = csv.writer(text, lineterminator="\n")
     heads = ["age_yr", "species", "set", "metallicity", "mass", "source", f"amount_{convention}", "share"]
-    table.writerow([*heads, "printed"])
-    for name in species:
-        whole = result.get(name, None, convention)
-        amounts, births = found.contribution(name), found.birth(name, convention)
-        printed = found.nodes.printed[:, positions(result.species, name)].sum(axis=1)
-        for t, age in enumerate(result.ages.tolist()):
-            for i, source in enumerate(result.sources):
-                for k in np.flatnonzero(amounts[i, t]):
-                    m, amount = found.models[k], float(amounts[i, t, k])
-                    share = share_of(amount, float(whole[t]))
-                    row = [m.set, m.metallicity, m.mass, source, amount, share, float(printed[k])]
-                    table.writerow([age, name, *("" if v is None else v for v in row)])
-                if births[i, t]:
-                    amount = float(births[i, t])
-                    share = share_of(amount, float(whole[t]))
-                    table.writerow([age, name, BIRTH, "", "", source, amount, share, ""])
-    replace_file(path, text.getvalue().encode())
+    rows = (row for name in species for row in _rows(found, name, convention))
+    write_tidy(path, provenance(found.result), [*heads, "printed"], rows)
+
+
+def _rows(found: Leverage, name: str, convention: Convention) -> Iterator[list[Any]]:
+    result = found.result
+    whole = result.get(name, None, convention)
+    amounts, births = found.contribution(name), found.birth(name, convention)
+    printed = found.nodes.printed[:, positions(result.species, name)].sum(axis=1)
+    for t, age in enumerate(result.ages.tolist()):
+        for i, source in enumerate(result.sources):
+            for k in np.flatnonzero(amounts[i, t]):
+                m, amount = found.models[k], float(amounts[i, t, k])
+                share = share_of(amount, float(whole[t]))
+                row = [m.set, m.metallicity, m.mass, source, amount, share, float(printed[k])]
+                yield [age, name, *("" if v is None else v for v in row)]
+            if births[i, t]:
+                amount = float(births[i, t])
+                yield [age, name, BIRTH, "", "", source, amount, share_of(amount, float(whole[t])), ""]
 
 
 def _told(one: Contributor) -> dict[str, Any]:

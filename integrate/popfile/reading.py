@@ -34,17 +34,7 @@ from ..sources import (
     StellarSource,
 )
 from .forms import read_delay, read_failures, read_imf, read_mixture
-from .text import FUNCTION, SETS, population_to_toml
-
-__all__ = [
-    "default_population",
-    "population_from_dict",
-    "population_to_toml",
-    "read_ages",
-    "read_population",
-    "template",
-    "told",
-]
+from .text import FUNCTION, SETS
 
 #: bytes; a population file is a page of text
 LARGEST_FILE = 1_000_000

@@ -2,18 +2,16 @@
 
 from __future__ import annotations
 
-import csv
-import io
+from collections.abc import Iterator
 from dataclasses import replace
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from steelyard.yields.whole import replace_file
-
 from ..files.labelled import Entry, attach, beside, put
 from ..provenance import attributes, provenance
+from ..tidy import write_tidy
 from .result import LEVELS, ScatteredYields
 
 if TYPE_CHECKING:
@@ -159,24 +157,17 @@ def write_statistics(drawn: ScatteredYields, path: str | Path) -> None:
     A row for each age and species: exact mean, standard deviation and skewness, whether a
     Gaussian stands for the law (1 or 0), the mean of the sample, and its quantiles; Msun.
     """
-    text = io.StringIO()
     lines = provenance(drawn.population.weigh(drawn.ages))
-    text.write(f"# {FORMAT}: {drawn.count} of {drawn.mass!r} Msun, mode {drawn.mode}, seed {drawn.seed}\n")
-    for line in lines[1:2] + lines[4:]:
-        text.write(f"# {line}".rstrip() + "\n")
-    table = csv.writer(text, lineterminator="\n")
+    drawn_of = f"{FORMAT}: {drawn.count} of {drawn.mass!r} Msun, mode {drawn.mode}, seed {drawn.seed}"
     heads = ["exact_mean", "exact_sigma", "exact_skewness", "gaussian", "sample_mean"]
-    table.writerow(["age_yr", "species", *heads, *(f"quantile_{q:g}" for q in LEVELS)])
     law, sample, quantiles = drawn.law, drawn.sample_mean(), drawn.quantiles()
-    for t, age in enumerate(drawn.ages.tolist()):
-        for i, species in enumerate(drawn.species):
-            values = [
-                law.mean[t, i],
-                law.sigma[t, i],
-                law.skewness[t, i],
-                int(law.gaussian[t, i]),
-                sample[t, i],
-            ]
-            row = [*values, *quantiles[:, t, i]]
-            table.writerow([repr(age), species, *(v if isinstance(v, int) else repr(float(v)) for v in row)])
-    replace_file(path, text.getvalue().encode())
+
+    def rows() -> Iterator[list[Any]]:
+        for t, age in enumerate(drawn.ages.tolist()):
+            for i, species in enumerate(drawn.species):
+                exact = [float(one[t, i]) for one in (law.mean, law.sigma, law.skewness)]
+                drawn_here = [float(sample[t, i]), *map(float, quantiles[:, t, i])]
+                yield [age, species, *exact, int(law.gaussian[t, i]), *drawn_here]
+
+    header = ["age_yr", "species", *heads, *(f"quantile_{q:g}" for q in LEVELS)]
+    write_tidy(path, [drawn_of, *lines[1:2], *lines[4:]], header, rows())

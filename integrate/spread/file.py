@@ -2,18 +2,16 @@
 
 from __future__ import annotations
 
-import csv
-import io
 import tomllib
-from collections.abc import Mapping
+from collections.abc import Iterator, Mapping
 from pathlib import Path
 from typing import Any
 
 from steelyard.yields.errors import InputError
-from steelyard.yields.whole import replace_file
 
 from ..popvalues import as_list, as_number, as_table, as_tables, as_word, require, short, told
 from ..provenance import provenance
+from ..tidy import write_tidy
 from .propagation import Spread, YieldErrors
 from .stated import StatedError
 
@@ -137,15 +135,15 @@ def write_errors_csv(errors: YieldErrors, path: str | Path) -> None:
     total, net, and error (a standard deviation, the same for total and net), Msun per Msun formed.
     Covariances are in the HDF5 file.
     """
-    result, text = errors.result, io.StringIO()
-    for line in (*provenance(result), "errors:", *(f"    {x}" for x in errors.spread.to_toml().splitlines())):
-        text.write(f"# {line}".rstrip() + "\n")
-    table = csv.writer(text, lineterminator="\n")
-    table.writerow(["age_yr", "source", "species", "total", "net", "error"])
-    for t, age in enumerate(result.ages.tolist()):
-        for source in (*result.sources, None):
-            for species in result.species:
-                values = [result.get(species, source, c)[t] for c in ("total", "net")]
-                error = errors.get(species, source)[t]
-                table.writerow([age, source or "sum", species, *map(float, values), float(error)])
-    replace_file(path, text.getvalue().encode())
+    result = errors.result
+    stated = ["errors:", *(f"    {line}" for line in errors.spread.to_toml().splitlines())]
+
+    def rows() -> Iterator[list[Any]]:
+        for t, age in enumerate(result.ages.tolist()):
+            for source in (*result.sources, None):
+                for species in result.species:
+                    values = [float(result.get(species, source, c)[t]) for c in ("total", "net")]
+                    yield [age, source or "sum", species, *values, float(errors.get(species, source)[t])]
+
+    header = ["age_yr", "source", "species", "total", "net", "error"]
+    write_tidy(path, [*provenance(result), *stated], header, rows())
