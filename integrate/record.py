@@ -2,8 +2,10 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
+from html import unescape
 from html.parser import HTMLParser
 from pathlib import Path
 
@@ -43,6 +45,8 @@ def is_output(path: str | Path) -> bool:
             head = file.read(2**20)
     except OSError:
         return False
+    if Path(path).suffix.casefold() in _DESCRIBED:
+        return b"steelyard" in head
     marked = any(f"{sign} {_POPULATION}\n".encode() in head for sign in ("#", "%", "   "))
     return marked or (head.startswith(b"<!DOCTYPE html>") and b"steelyard" in head)
 
@@ -65,7 +69,8 @@ def read_record(path: str | Path) -> Record:
         It can't be read, or doesn't say.
     """
     where = str(path)
-    text = read_text(path)
+    read = _DESCRIBED.get(Path(path).suffix.casefold(), read_text)
+    text = read(path)
     if text.startswith("<!DOCTYPE html>"):
         found = _Page()
         found.feed(text)
@@ -107,6 +112,51 @@ def read_text(path: str | Path) -> str:
         ) from None
     except OSError as error:
         raise InputError(f"can't be read: {error.strerror}", where=where, mend="check its name") from None
+
+
+def _of_png(path: str | Path) -> str:
+    from PIL import Image, UnidentifiedImageError
+
+    try:
+        with Image.open(path) as image:
+            return str(image.info.get("Description", ""))
+    except (OSError, UnidentifiedImageError, ValueError, SyntaxError) as error:
+        raise _no_picture(path, error) from None
+
+
+def _of_svg(path: str | Path) -> str:
+    found = re.search(r"<dc:description>(.*?)</dc:description>", read_text(path), re.DOTALL)
+    return unescape(found[1]) if found else ""
+
+
+def _of_pdf(path: str | Path) -> str:
+    """The subject of a PDF as matplotlib writes it: text in parentheses, or UTF-16 with its mark."""
+    try:
+        data = Path(path).read_bytes()
+    except OSError as error:
+        raise _no_picture(path, error) from None
+    found = re.search(rb"/Subject \(((?:[^()\\]|\\.)*)\)", data, re.DOTALL)
+    if not found:
+        return ""
+    signs = {b"n": b"\n", b"r": b"\r", b"t": b"\t"}
+    text = re.sub(rb"\\(.)", lambda m: signs.get(m[1], m[1]), found[1], flags=re.DOTALL)
+    return text.decode("utf-16") if text.startswith(b"\xfe\xff") else text.decode("latin-1")
+
+
+def _no_picture(path: str | Path, error: Exception) -> InputError:
+    why = " ".join(str(error).split())[:200]
+    return InputError(
+        f"the picture can't be read: {why}", where=str(path), mend="give it as steelyard wrote it"
+    )
+
+
+#: figures, whose description says how they were made
+_DESCRIBED = {".png": _of_png, ".svg": _of_svg, ".pdf": _of_pdf}
+
+
+def is_figure(path: str | Path) -> bool:
+    """Return whether a file is a picture by its ending."""
+    return Path(path).suffix.casefold() in _DESCRIBED
 
 
 def _unfolded(lines: Sequence[str]) -> Iterator[str]:

@@ -15,7 +15,7 @@ from typing import Any
 from typer.core import TyperCommand
 
 from steelyard.integrate.provenance import made_by
-from steelyard.integrate.record import Record, read_record, read_text
+from steelyard.integrate.record import Record, is_figure, read_record, read_text
 from steelyard.scripts.given import ASSUMED
 from steelyard.yields.errors import InputError
 
@@ -117,11 +117,22 @@ def again(path: Path) -> tuple[bool, str]:
                 where=str(path),
                 mend="give it the name that it was written by",
             )
+        if is_figure(path):
+            return _pictured(path, fresh)
         same, message = compared(read_text(path), read_text(fresh))
         beside = path.with_name("yields.dat")
         if same and path.name == "ReadMe" and beside.is_file():
             same, message = compared(read_text(beside), read_text(out / beside.name))
     return same, f"{path}: made again, {message}"
+
+
+def _pictured(path: Path, fresh: Path) -> tuple[bool, str]:
+    if path.read_bytes() == fresh.read_bytes():
+        return True, f"{path}: drawn again, it agrees to the last byte"
+    from matplotlib import __version__
+
+    why = f"perhaps it was drawn by another matplotlib than {__version__}"
+    return False, f"{path}: drawn again, the picture differs; {why}"
 
 
 def _checked(record: Record, path: Path) -> list[str]:

@@ -7,10 +7,13 @@ from pathlib import Path
 import pytest
 from typer.testing import CliRunner
 
+from steelyard.integrate.figures import yields_over_time
+from steelyard.integrate.popfile import default_population
 from steelyard.integrate.provenance import command, made_by
 from steelyard.integrate.record import read_record
 from steelyard.scripts.main import app
 from steelyard.scripts.recorded import compared
+from steelyard.yields.figures import save
 
 runner = CliRunner()
 
@@ -86,6 +89,36 @@ def test_one_other_digit_is_found(name):
     path.write_text(spoilt)
     result = weigh(path)
     assert result.exit_code == 1 and "the digits differ: line " in result.stdout, result.stdout
+
+
+@pytest.mark.parametrize("ending", ["png", "pdf"])
+def test_figures_are_drawn_again(ending):
+    made("weigh", "--species", "C,O,Fe", "-o", "out")
+    made("leverage", "-e", "O", "-o", "out")
+    for name in ("yields-over-time", "production-pattern", "mass-function-and-weights"):
+        path = Path(f"out/{name}.{ending}")
+        result = weigh(path)
+        assert result.exit_code == 0 and result.stdout == f"{path}: drawn again, it agrees to the last byte\n"
+    data = path.read_bytes()
+    path.write_bytes(data.replace(b"kroupa-2001", b"kroupa-1993") if ending == "pdf" else data[:-60])
+    result = weigh(path)
+    assert result.exit_code in (1, 2) and (result.stdout or result.stderr).count("\n") == 1
+
+
+def test_pictures_of_something_else_say_so():
+    made("sets", "--kind", "agb", "--figure", "map.svg")
+    result = weigh("map.svg")
+    assert result.exit_code == 2 and "doesn't say which population" in result.stderr
+    Path("not.png").write_bytes(b"steelyard, but no picture")
+    assert "picture can't be read" in weigh("not.png").stderr
+
+
+def test_svg_tells_its_population():
+    stars = default_population()
+    with made_by("weigh population.toml"):
+        save(yields_over_time(stars.weigh(["10 Myr", "1 Gyr"]), ["O"]), "a.svg")
+    record = read_record("a.svg")
+    assert record.command == "weigh population.toml" and 'form = "kroupa-2001"' in record.population
 
 
 def test_a_scatter_file_with_another_figure_is_found():
