@@ -20,7 +20,11 @@ FOUND = 1
 def command(
     what: Annotated[
         list[str],
-        typer.Argument(metavar="SET|FILE...", help="Id of a yield set, or the files that make up one."),
+        typer.Argument(
+            metavar="SET|FILE...",
+            help="Id of a yield set, or the files that make up one.",
+            autocompletion=terminal.set_ids,
+        ),
     ],
     layout: str = typer.Option(
         "", metavar="NAME|FILE", help="How the files are laid out; an exported set needs none."

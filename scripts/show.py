@@ -30,11 +30,17 @@ OTHERS = typer.Option(
     metavar="SET",
     help="Another set, to stand beside this one at the metallicity named; may be given often.",
     show_default=False,
+    autocompletion=terminal.set_ids,
 )
 
 
 def command(
-    set: str = typer.Argument(..., metavar="SET", help="Id of a yield set; `steelyard sets` lists them."),
+    set: str = typer.Argument(
+        ...,
+        metavar="SET",
+        help="Id of a yield set; `steelyard sets` lists them.",
+        autocompletion=terminal.set_ids,
+    ),
     metallicity: str = typer.Option(
         "", "--metallicity", "-Z", metavar="Z", help="Only models of this metallicity."
     ),

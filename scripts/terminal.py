@@ -131,6 +131,13 @@ def words(text: str, option: str) -> list[str]:
     return found
 
 
+def set_ids(incomplete: str) -> list[str]:
+    """Return the ids of yield sets that begin so, for the shell to complete."""
+    from steelyard.yields.library import catalogue
+
+    return [one for one in catalogue() if one.startswith(incomplete)]
+
+
 def mark(sign: str, plain: str) -> str:
     """Return a sign, or its plain stand-in where the terminal's encoding lacks it."""
     try:

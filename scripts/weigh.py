@@ -285,10 +285,11 @@ def _table(
         if errors:
             cells.append(_error(float(errors.get(species)[i])))
         if compared:
-            cells.append(_ratio(result, species, rate, i))
+            told = _ratio(result, species, rate, i)
+            cells.append(f"{told}{dagger if told != '-' and result.lacking(species) else ' '}")
             if errors:
                 value = float(errors.ratio(species, "Fe")[i])
-                cells.append("" if cells[-1] == "-" else f"{value:.2f}")
+                cells.append("" if told == "-" else f"{value:.2f}")
         made.add_row(species, *cells)
     return made
 

@@ -101,6 +101,7 @@ class Galaxy:
 
     gas: float = 1e7
     star_formation: float = 3e-10  # of the gas, per yr
+    history: tuple = ((2e9, 2.0), (6e9, 0.3), (1e11, 1.0))  # until when, yr, how many times that
     inflow: float = 1e-3  # Msun per yr
     outflow: float = 1.0  # of the star-formation rate
     lost: dict = field(default_factory=dict)  # share of a source's ejecta that leaves at once
@@ -138,7 +139,8 @@ def run(table, galaxy, chance=None, seed=0):
             gas += ((1 - lost)[:, None] * ejecta).sum(axis=0)
             whole += ((1 - lost) * back).sum()
         fraction = gas / whole
-        stars = galaxy.star_formation * whole * dt
+        vigour = next(factor for end, factor in galaxy.history if (step + 0.5) * dt < end)
+        stars = galaxy.star_formation * vigour * whole * dt
         wind = min(galaxy.outflow * stars, 0.5 * whole)
         metals = sum(max(f, 0.0) for f, s in zip(fraction, names, strict=True) if s not in ("H", "He"))
         born.append(stars)

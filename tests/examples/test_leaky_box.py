@@ -105,7 +105,8 @@ def chance(made, table, tmp_path_factory):
 
 def test_a_scatter_file_gives_the_spread_that_its_exact_covariance_tells(table, chance):
     """Variances of independent draws add: Campbell's theorem, kept in the file, against galaxies run."""
-    few = Galaxy(gas=2e5, inflow=0.0, outflow=0.0, star_formation=5e-11, steps=25, until=8e9)
+    steady = {"star_formation": 5e-11, "history": ((1e11, 1.0),)}
+    few = Galaxy(gas=2e5, inflow=0.0, outflow=0.0, steps=25, until=8e9, **steady)
     drawn = read_chance(chance, table)
     ends = np.array([run(table, few, drawn, seed)["gas"][-1] for seed in range(150)])
     mean = run(table, few)
