@@ -6,6 +6,7 @@ from pathlib import Path
 
 import typer
 
+from steelyard.integrate.provenance import FORMAT
 from steelyard.scripts import given, terminal
 from steelyard.yields.errors import InputError, nearest
 from steelyard.yields.units import plain
@@ -43,6 +44,11 @@ def command(
 
     if form not in FORMATS:
         raise InputError(f"format {form!r} isn't known", where="--format", mend=nearest(form, FORMATS))
+    path = Path(output)
+    # before the work, not after
+    if not path.parent.is_dir():
+        raise InputError(f"there is no folder {path.parent}", where=output, mend="make it first")
+    terminal.refuse_foreign(path, FORMAT)
     population = given.population(file, changes, species=species)
     nodes = given.read_given_ages(ages) if ages else None
     if metallicities:
@@ -52,11 +58,9 @@ def command(
     with terminal.slow("weighing"):
         made = handoff(population, zs, nodes, error, chosen=not metallicities)
     with terminal.slow("writing"):
-        write_handoff(made, Path(output), form)
+        write_handoff(made, path, form)
     print(
         f"{len(made.results)} metallicities, {len(made.ages)} ages, {len(made.results[0].sources)} sources,"
         f" {len(made.results[0].species)} species; error of interpolation {made.checked:.2e}"
     )
-    print(
-        f"written: {output}, {Path(output).stat().st_size / 1e6:.3g} MB; `steelyard weigh {output}` checks it"
-    )
+    print(f"written: {output}, {path.stat().st_size / 1e6:.3g} MB; `steelyard weigh {output}` checks it")

@@ -77,6 +77,8 @@ def write_votable(held: StoredYields, path: str | Path) -> None:
     from astropy.io.votable.tree import Resource, TableElement, VOTableFile
 
     made, resource = VOTableFile(), Resource()
+    # the tables' own text is packed
+    made.description = f"{held.attributes['format']}, steelyard {held.attributes['steelyard_version']}"
     made.resources.append(resource)
     for name, table in _tables(held).items():
         one = TableElement.from_table(made, table)

@@ -55,10 +55,25 @@ def test_compiled_languages_read_it(file, tmp_path, compiler, suffix):
         (("--metallicities", "0.02"), "no grid"),
         (("--from", "-0.1"), "mass fractions"),
         (("nowhere.toml",), "there is no such file"),
+        (("--with", "agb=marigo-2002"), "isn't known"),
+        (("-o", "no/such/folder.h5"), "there is no folder no/such"),
     ],
 )
 def test_refusals(arguments, says, tmp_path):
     path = tmp_path / "y.h5"
-    result = runner.invoke(app, ["handoff", "--species", "O", *arguments, "-o", str(path)])
+    result = runner.invoke(app, ["handoff", "-o", str(path), "--species", "O", *arguments])
     assert result.exit_code == 2 and says in result.stderr and result.stderr.count("\n") == 1
     assert not path.exists()
+
+
+@pytest.mark.parametrize("form", ["hdf5", "netcdf", "fits", "votable", "ecsv", "csv"])
+def test_a_file_of_ours_is_replaced_and_another_one_is_not(form, tmp_path):
+    path = tmp_path / "mine"
+    short = ["handoff", "--species", "O", "--metallicities", "0.004,0.02", "--ages", "10 Myr, 1 Gyr"]
+    words = [*short, "--format", form, "-o", str(path)]
+    for _ in range(2):
+        assert runner.invoke(app, words).exit_code == 0
+    path.write_text("my paper")
+    result = runner.invoke(app, words)
+    assert result.exit_code == 2 and "isn't replaced" in result.stderr
+    assert path.read_text() == "my paper"
