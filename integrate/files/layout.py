@@ -132,7 +132,7 @@ def stored(
     errors : YieldErrors, optional
         Of the one result.
     told : mapping, optional
-        More attributes.
+        More attributes, or others.
 
     Raises
     ------
@@ -168,9 +168,12 @@ def stored(
         for name, entry in DATASETS.items()
     }
     found = attributes(many[-1]) | {name: _common(many, z, name) for name in ("policies", "notes")}
+    if len(many) > 1:
+        found["summary"] = f"Z = {z[0]:g} to {z[-1]:g};{found['summary'].partition(';')[2]}"
     if errors is not None:
         arrays |= error_arrays(errors)
         found["spread"] = errors.spread.to_toml()
+    found |= {"format_version": FORMAT_VERSION} | dict(told or {})
     return StoredYields(
         found["population"],
         z,
@@ -180,7 +183,7 @@ def stored(
         tuple(first.remnants_by_kind),
         tuple(first.events),
         arrays,
-        found | {"format_version": FORMAT_VERSION} | dict(told or {}),
+        found,
     )
 
 

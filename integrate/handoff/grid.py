@@ -46,6 +46,8 @@ class Handoff:
 
     Attributes
     ----------
+    population : Population
+        As it was given; its own metallicity doesn't matter.
     results : tuple of PopulationYields
         One for each metallicity, at the same ages.
     error : float or None
@@ -54,6 +56,7 @@ class Handoff:
         Largest error measured between the nodes, in the same measure.
     """
 
+    population: Population
     results: tuple[PopulationYields, ...]
     error: float | None
     checked: float
@@ -146,7 +149,7 @@ def handoff(
         raise InputError("one metallicity is no grid", mend="give two or more, or use `steelyard weigh`")
     last = float(max(population.ages))
     # ages are those of the grid
-    draft = _Draft(replace(population, ages=(last,)))
+    draft = _Draft(population := replace(population, ages=(last,)))
     if chosen:
         zs = draft.with_jumps(*zs)
     fixed = ages is not None
@@ -180,7 +183,7 @@ def handoff(
                 mend="allow a larger error, or narrow the metallicities",
             )
     given = None if fixed or not chosen else error
-    return Handoff(tuple(draft.at(z).weigh(nodes) for z in zs), given, float(checked))
+    return Handoff(population, tuple(draft.at(z).weigh(nodes) for z in zs), given, float(checked))
 
 
 def _pairs(values: Sequence[float]) -> list[tuple[float, float]]:

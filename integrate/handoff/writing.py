@@ -5,6 +5,7 @@ from __future__ import annotations
 from pathlib import Path
 
 from ..files import stored, write_as
+from ..popfile import population_to_toml
 from .grid import Handoff
 
 
@@ -37,7 +38,11 @@ def write_handoff(made: Handoff, path: str | Path, form: str = "hdf5") -> None:
     ...     read_stored(f"{folder}/yields.fits").arrays["total"].shape
     (2, 2, 1, 1)
     """
-    told: dict[str, str | float] = {"interpolation": made.interpolation, "error_checked": made.checked}
+    told: dict[str, str | float] = {
+        "population": population_to_toml(made.population),
+        "interpolation": made.interpolation,
+        "error_checked": made.checked,
+    }
     if made.error is not None:
         told["error_asked"] = made.error
     write_as(stored(made.results, told=told), path, form)

@@ -14,6 +14,7 @@ from steelyard.integrate import DelayedSource, Edges, Join, Population, StellarS
 from steelyard.integrate.files import FORMATS, agrees, format_of, read_stored, stored, write_as
 from steelyard.integrate.files.layout import DATASETS, SCALES
 from steelyard.integrate.handoff import handoff, write_handoff
+from steelyard.integrate.popfile import population_to_toml
 from steelyard.yields.errors import InputError
 
 SPECIES = ["H", "O", "Al26", "Fe"]
@@ -60,7 +61,9 @@ def test_comes_back_whole(made, form, tmp_path):
     for name, values in held.scales.items():
         assert np.array_equal(found.scales[name], values), name
     for name, value in held.attributes.items():
-        assert found.attributes[name] == value, name
+        assert name == "population" or found.attributes[name] == value, name
+    assert found.population == found.attributes["population"] == population_to_toml(made.population)
+    assert found.attributes["summary"].startswith("Z = 0 to 0.02; kroupa-2001")
     assert found.attributes["error_checked"] == made.checked
     assert "linear in metallicity" not in found.attributes["interpolation"]
 
