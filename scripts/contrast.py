@@ -54,6 +54,7 @@ def command(
     ),
     elements: str = typer.Option(
         "",
+        *given.LISTED,
         metavar="LIST",
         help="What to compare: a list such as O,Mg,Fe, or all. Default: the list in the file, or"
         " C,N,O,Mg,Si,Ca,Mn,Fe,Ni.",

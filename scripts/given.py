@@ -27,6 +27,16 @@ POPULATION = typer.Argument(
     show_default=False,
 )
 
+#: what a list of species is called: the trade says either
+LISTED = ("--species", "--elements", "-e")
+
+SPECIES = typer.Option(
+    "",
+    *LISTED,
+    metavar="LIST",
+    help="elements, nuclides, or a list such as O,Mg,Al26, in place of the file's.",
+)
+
 WITH = typer.Option(
     [],
     "--with",

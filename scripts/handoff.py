@@ -23,9 +23,7 @@ def command(
     metallicities: str = typer.Option("", metavar="LIST", help="Metallicities in place of chosen ones."),
     ages: str = typer.Option("", metavar="LIST", help="Ages in place of chosen ones."),
     error: float = typer.Option(1e-2, metavar="E", help="Bound on the error of linear interpolation."),
-    species: str = typer.Option(
-        "", metavar="LIST", help="elements, nuclides, or a list, in place of the file's."
-    ),
+    species: str = given.SPECIES,
     changes: list[str] = given.WITH,
     form: str = typer.Option("hdf5", "--format", metavar="|".join(FORMATS), help="Form of the file."),
     output: str = typer.Option(..., "--output", "-o", metavar="FILE", help="File to write."),

@@ -30,8 +30,7 @@ def command(
     element: Annotated[
         list[str] | None,
         typer.Option(
-            "--elements",
-            "-e",
+            *given.LISTED,
             metavar="LIST",
             help="Elements or nuclides, such as O,Mg,Fe; may be given again. Default: the file's list,"
             f" or {','.join(CHOICE)}.",

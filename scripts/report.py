@@ -30,8 +30,7 @@ def command(
     file: str = given.POPULATION,
     elements: str = typer.Option(
         "",
-        "--elements",
-        "-e",
+        *given.LISTED,
         metavar="LIST",
         help="Elements or nuclides to tell of, such as O,Mg,Fe. Default: the list in the file, or"
         " C,N,O,Mg,Si,Ca,Mn,Fe,Ni.",

@@ -44,9 +44,7 @@ def command(
     ages: str = typer.Option(
         "", metavar="LIST", help='Ages in place of the file\'s, such as "10 Myr, 1 Gyr"; all are printed.'
     ),
-    species: str = typer.Option(
-        "", metavar="LIST", help="elements, nuclides, or a list such as O,Mg,Al26, in place of the file's."
-    ),
+    species: str = given.SPECIES,
     net: bool = typer.Option(False, "--net", help="Net yields: less what was there at birth."),
     ratio: str = typer.Option(
         "", metavar="LIST", help="Ratios of the figure, such as Mg/Fe,C/O. Default: up to six."

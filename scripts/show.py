@@ -10,7 +10,7 @@ from typing import Any, Literal
 import numpy as np
 import typer
 
-from steelyard.scripts import terminal
+from steelyard.scripts import given, terminal
 from steelyard.scripts.sets import about, citation, convention, papers
 from steelyard.yields import Slice, YieldSet, load
 from steelyard.yields.errors import InputError, nearest
@@ -46,6 +46,7 @@ def command(
     ),
     species: str = typer.Option(
         "",
+        *given.LISTED,
         metavar="LIST",
         help="Species to show, such as O,Mg24,Fe; all with elements or nuclides. Default: C, N, O, Mg,"
         " Si, S, Ca, Fe as far as they are followed; all in JSON and CSV.",

@@ -35,7 +35,7 @@ def command(
         help="LaTeX for the AAS journals or for any class; machine-readable for the AAS or for the CDS; CSV.",
     ),
     elements: str = typer.Option(
-        "", "--elements", "-e", metavar="LIST", help="Elements or nuclides, such as O,Mg,Fe, in this order."
+        "", *given.LISTED, metavar="LIST", help="Elements or nuclides, such as O,Mg,Fe, in this order."
     ),
     ages: str = typer.Option(
         "", metavar="LIST", help='Ages such as "100 Myr, 13.8 Gyr". Default: the oldest of the file.'

@@ -41,9 +41,7 @@ def command(
     metallicity: str = typer.Option(
         "", "--metallicity", "-Z", metavar="Z", help="Metallicity in place of the file's."
     ),
-    species: str = typer.Option(
-        "", metavar="LIST", help="elements, nuclides, or a list such as O,Mg,Al26, in place of the file's."
-    ),
+    species: str = given.SPECIES,
     net: bool = typer.Option(False, "--net", help="Print net yields: less what was there at birth."),
     rate: bool = typer.Option(False, "--rate", help="Print yields per year at an age, not up to it."),
     spread: str = typer.Option(

@@ -1,8 +1,5 @@
 """Unusable input of every command: status 2, one line that says what and how to mend it, nothing written."""
 
-import os
-import subprocess
-import sys
 from pathlib import Path
 
 import pytest
@@ -120,21 +117,3 @@ def test_one_line_and_status_2(name, args, told, tmp_path, monkeypatch):
     assert result.stderr.startswith("steelyard: ") and result.stderr.count("\n") == 1
     assert told in result.stderr and "Traceback" not in result.stderr
     assert {str(path) for path in Path().iterdir()} - {"library"} == set(FILES)
-
-
-def completed(line, at):
-    """What bash is told that may stand there."""
-    more = {"COMP_WORDS": line, "COMP_CWORD": str(at), "_STEELYARD_COMPLETE": "complete_bash"}
-    script = "from steelyard.scripts.main import main; main()"
-    done = subprocess.run(
-        [sys.executable, "-c", script], capture_output=True, text=True, env={**os.environ, **more}
-    )
-    assert done.stderr == ""
-    return done.stdout.split()
-
-
-def test_a_shell_completes_commands_and_options():
-    assert completed("steelyard ", 1) == list(COMMANDS)
-    assert completed("steelyard le", 1) == ["leverage"]
-    assert completed("steelyard report --sp", 2) == ["--spread"]
-    completed("steelyard nonsense --s", 2)
