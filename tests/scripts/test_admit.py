@@ -24,21 +24,7 @@ def here(tmp_path, monkeypatch):
     return tmp_path
 
 
-def run(*args):
-    result = runner.invoke(app, list(args))
-    assert result.exit_code == 0, result.output
-    assert result.stderr == ""
-    return result.stdout
-
-
-def refused(*args):
-    result = runner.invoke(app, list(args))
-    assert result.exit_code == 2, result.output
-    assert result.stdout == "" and result.stderr.count("\n") == 1 and result.stderr.startswith("steelyard: ")
-    return result.stderr
-
-
-def test_from_a_table_to_a_set(here):
+def test_from_a_table_to_a_set(run, here):
     proposed = run("admit", "t.csv", "--guess")
     (here / "t.toml").write_text(proposed)
     tried = run("admit", "t.csv", "--layout", "t.toml", "--id", "invented-2026", "--dry-run")
@@ -53,7 +39,7 @@ def test_from_a_table_to_a_set(here):
     assert run("library", "--layout", "invented-2026") == proposed
 
 
-def test_json(here):
+def test_json(run, here):
     (one,) = json.loads(run("admit", "t.csv", "-l", "wide", "--id", "a-2026", "--json"))
     assert one["models"] == 2 and one["species"] == ["C12", "O16"] and one["metallicities"] == [0.02]
     assert one["convention"] == "total" and one["kept"] == str(here / "library" / "a-2026.h5")
@@ -62,7 +48,7 @@ def test_json(here):
     assert entry["checksum"] == one["checksum"] and entry["sources"][0]["file"] == "t.csv"
 
 
-def test_replacing_and_removing():
+def test_replacing_and_removing(run, refused):
     run("admit", "t.csv", "-l", "wide", "--id", "a-2026")
     assert "--replace" in refused("admit", "t.csv", "-l", "wide", "--id", "a-2026")
     run("admit", "t.csv", "-l", "wide", "--id", "a-2026", "--replace")
@@ -73,7 +59,7 @@ def test_replacing_and_removing():
 
 
 @pytest.mark.parametrize("name", ["out", "out.ecsv", "out.h5"])
-def test_exports_are_admitted_without_a_layout(name):
+def test_exports_are_admitted_without_a_layout(run, refused, name):
     run("admit", "t.csv", "-l", "wide", "--id", "a-2026")
     run("library", "--export", "a-2026", name)
     run("admit", name, "--id", "b-2026")
@@ -81,7 +67,7 @@ def test_exports_are_admitted_without_a_layout(name):
     assert "exists already" in refused("library", "--export", "a-2026", name)
 
 
-def test_a_broken_file_in_the_library(here):
+def test_a_broken_file_in_the_library(run, here):
     run("admit", "t.csv", "-l", "wide", "--id", "a-2026")
     (here / "library" / "bad.h5").write_bytes(b"x")
     result = runner.invoke(app, ["library"])
@@ -89,7 +75,7 @@ def test_a_broken_file_in_the_library(here):
     assert "bad.h5" in result.stderr and result.stderr.count("\n") == 1
 
 
-def test_refusals(here):
+def test_refusals(refused, here):
     assert "--guess` proposes one" in refused("admit", "t.csv")
     assert "kobayashi-2006 ships with steelyard" in refused(
         "admit", "t.csv", "-l", "wide", "--id", "kobayashi-2006"
@@ -107,7 +93,7 @@ def test_refusals(here):
     assert not (here / "library").exists()
 
 
-def test_one_bad_set_of_several_keeps_none(here):
+def test_one_bad_set_of_several_keeps_none(refused, here):
     table = "label,mass,Z,remnant,C12\nx,1.0,0.02,0.55,1.5E-03\ny,1.0,0.02,0.55,1.5E-03\n"
     (here / "two.csv").write_text(table)
     (here / "two.toml").write_text(
@@ -126,7 +112,7 @@ def test_one_bad_set_of_several_keeps_none(here):
         ("doherty-2014a-table1.txt", "doherty-2014"),
     ],
 )
-def test_raw_texts_are_admitted_as_they_are(raw, file, layout):
+def test_raw_texts_are_admitted_as_they_are(run, raw, file, layout):
     run("admit", str(raw / file), "--layout", layout, "--id", "copy")
     copy, shipped = load("copy"), load(layout)
     assert copy.species == shipped.species

@@ -30,33 +30,6 @@ winds = "rest"
 """
 
 
-@pytest.fixture(autouse=True)
-def _elsewhere(tmp_path, monkeypatch):
-    monkeypatch.chdir(tmp_path)
-    monkeypatch.delenv("FORCE_COLOR", raising=False)
-
-
-def run(*args):
-    """Run a command and give what it printed."""
-    result = runner.invoke(app, list(args))
-    assert result.exit_code == 0, result.output
-    assert result.stderr == ""
-    return result.stdout
-
-
-def refused(*args):
-    """Run a command that can't succeed: status 2, one line on standard error, nothing else, no file."""
-    before = sorted(Path().rglob("*"))
-    result = runner.invoke(app, list(args))
-    assert result.exit_code == 2, result.output
-    assert result.stdout == ""
-    line = result.stderr
-    assert line.startswith("steelyard: ") and line.count("\n") == 1 and line.endswith("\n")
-    assert "Traceback" not in line and len(line) < 700
-    assert sorted(Path().rglob("*")) == before
-    return line
-
-
 def outside(*args, **more):
     """Run the command in a process of its own."""
     code = "from steelyard.scripts.main import main; main()"
@@ -69,7 +42,7 @@ def population(text):
     return "population.toml"
 
 
-def test_sets_json_has_the_promised_shape():
+def test_sets_json_has_the_promised_shape(run):
     found = json.loads(run("sets", "--json"))
     assert [one["id"] for one in found] == list(shipped())
     for one in found:
@@ -88,19 +61,19 @@ def test_sets_json_has_the_promised_shape():
     assert by_id["nomoto-1997-w7"]["masses"] == by_id["nomoto-1997-w7"]["metallicities"] == []
 
 
-def test_sets_by_kind():
+def test_sets_by_kind(run):
     listed = run("sets", "--kind", "agb")
     assert "karakas-2010" in listed and "MNRAS 403, 1413" in listed and "kobayashi-2006" not in listed
     assert {one["kind"] for one in json.loads(run("sets", "--kind", "agb", "--json"))} == {"agb"}
 
 
-def test_every_set_can_be_shown():
+def test_every_set_can_be_shown(run):
     for one in shipped():
         text = run("show", one)
         assert load(one).checksum in text and "doi:10." in text and "…" not in text.split("checksum")[1]
 
 
-def test_show_prints_published_figures():
+def test_show_prints_published_figures(run):
     text = run("show", "kobayashi-2006", "--metallicity", "0.02", "--species", "O16,Fe56,Mg")
     # Kobayashi+ 2006, the journal's machine-readable table: 20 Msun, Z = 0.02
     row = next(line.split() for line in text.splitlines() if line.split()[:1] == ["20"])
@@ -114,7 +87,7 @@ def test_show_prints_published_figures():
     ]
 
 
-def test_show_as_csv_and_json_keep_every_digit():
+def test_show_as_csv_and_json_keep_every_digit(run):
     grid = load("karakas-2010")
     lines = run("show", "karakas-2010", "--csv", "-Z", "0.02").splitlines()
     assert lines[0].split(",")[:6] == ["metallicity", "mass", "ejected", "remnant", "wind", "rest"]
@@ -128,7 +101,7 @@ def test_show_as_csv_and_json_keep_every_digit():
     assert model["ejected"] + model["remnant"] == pytest.approx(3.0, rel=1e-14)
 
 
-def test_weigh_gives_the_known_integral():
+def test_weigh_gives_the_known_integral(run):
     """Kroupa 2001 on 0.08-120 Msun over the Z = 0.02 models of Kobayashi+ 2006, linear in mass."""
     result = json.loads(run("weigh", population(COLLAPSE), "--json"))
     assert result["total"]["core-collapse"]["O16"][-1] == pytest.approx(7.193084341578e-3, rel=1e-10)
@@ -140,7 +113,7 @@ def test_weigh_gives_the_known_integral():
     assert row[1:3] == ["7.193e-03", "7.193e-03"]
 
 
-def test_weigh_json_has_the_promised_shape():
+def test_weigh_json_has_the_promised_shape(run):
     result = json.loads(run("weigh", "--json", "--ages", "10 Myr, 13.8 Gyr", "--species", "H,O,Fe"))
     assert result["ages_yr"] == [1e7, 13.8e9]
     assert result["species"] == ["H", "O", "Fe"]
@@ -157,7 +130,7 @@ def test_weigh_json_has_the_promised_shape():
     np.testing.assert_allclose(budget, 1, rtol=1e-12)
 
 
-def test_weigh_table_marks_what_is_missing():
+def test_weigh_table_marks_what_is_missing(run):
     table = run("weigh", "--no-figures", "--species", "H,Be,O,Cl,Fe")
     rows = {line.split()[0]: line.split()[1:] for line in table.splitlines() if line[:2].strip() in RATIOS}
     assert rows["H"][2] == "-" and rows["H"][3].endswith("†")
@@ -175,14 +148,14 @@ def test_weigh_table_marks_what_is_missing():
 RATIOS = ("H", "Be", "O", "Cl", "Fe")
 
 
-def test_weigh_prints_each_age_asked_for_and_both_conventions():
+def test_weigh_prints_each_age_asked_for_and_both_conventions(run):
     table = run("weigh", "--no-figures", "--ages", "10 Myr,1 Gyr", "--species", "O,Fe", "--net", "--rate")
     assert "Net yields at 10 Myr, Msun per yr and Msun formed" in table
     assert "Net yields at 1 Gyr, Msun per yr and Msun formed" in table
     assert "[X/Fe]" not in table
 
 
-def test_weigh_writes_all_files_and_weighs_them_again():
+def test_weigh_writes_all_files_and_weighs_them_again(run):
     printed = run("weigh", "--species", "C,O,Fe", "-o", "out/deep")
     names = ["production-pattern.pdf", "production-pattern.png", "yields-over-time.pdf"]
     names += ["yields-over-time.png", "yields.csv", "yields.h5"]
@@ -192,14 +165,14 @@ def test_weigh_writes_all_files_and_weighs_them_again():
     assert json.loads(run("weigh", "out/deep/yields.h5", "--json"))["agrees"] is True
 
 
-def test_a_population_that_has_ejected_nothing_has_a_table_but_no_figures():
+def test_a_population_that_has_ejected_nothing_has_a_table_but_no_figures(run):
     printed = run("weigh", "--ages", "1 Myr", "--species", "O,Fe")
     assert "written: yields.h5, yields.csv" in printed
     assert printed.count("not drawn: ") == 2
     assert sorted(p.name for p in Path().iterdir()) == ["yields.csv", "yields.h5"]
 
 
-def test_weighing_again_finds_a_changed_digit():
+def test_weighing_again_finds_a_changed_digit(run):
     import h5py
 
     run("weigh", population(COLLAPSE), "--no-figures")
@@ -212,7 +185,7 @@ def test_weighing_again_finds_a_changed_digit():
     assert "differ" in result.stdout and result.stderr == ""
 
 
-def test_template_is_written_once_and_runs():
+def test_template_is_written_once_and_runs(run, refused):
     assert "population.toml" in run("weigh", "--template")
     text = Path("population.toml").read_text()
     assert run("weigh", "--template", "-") == text
@@ -225,7 +198,7 @@ def test_template_is_written_once_and_runs():
 
 
 @pytest.mark.parametrize("command", [[], ["sets"], ["show"], ["weigh"]])
-def test_help_has_examples_that_run(command):
+def test_help_has_examples_that_run(run, command):
     import shlex
 
     text = run(*command, "--help")
@@ -270,11 +243,11 @@ def test_help_has_examples_that_run(command):
         (["weigh", "--json", "--rate"], "holds amounts, no rates"),
     ],
 )
-def test_bad_command_lines_are_told_in_one_line(args, told):
+def test_bad_command_lines_are_told_in_one_line(refused, args, told):
     assert told in refused(*args)
 
 
-def test_values_from_a_file_are_told_with_its_name():
+def test_values_from_a_file_are_told_with_its_name(refused):
     good = COLLAPSE
     cases = {
         good.replace("metallicity", "metalicity"): "key 'metalicity' isn't known; did you mean metallicity?",
@@ -293,7 +266,7 @@ def test_values_from_a_file_are_told_with_its_name():
         assert line.startswith("steelyard: population.toml: ") and told in line, line
 
 
-def test_hostile_files_are_told_in_one_line():
+def test_hostile_files_are_told_in_one_line(refused):
     for content in (b"", b"\x00" * 100, b"\x7fELF\xff\xfe", b"a = " + b"[" * 9999, b"x" * 5_000_000):
         Path("hostile.toml").write_bytes(content)
         refused("weigh", "hostile.toml")
@@ -302,12 +275,12 @@ def test_hostile_files_are_told_in_one_line():
         refused("weigh", "hostile.h5")
 
 
-def test_escape_codes_from_a_file_do_not_reach_the_terminal():
+def test_escape_codes_from_a_file_do_not_reach_the_terminal(refused):
     line = refused("weigh", population('metallicity = 0.02\n"\\u001b[31mred\\u0007" = 1\nsource = []\n'))
     assert "\x1b" not in line and "\x07" not in line
 
 
-def test_a_place_that_cannot_be_written():
+def test_a_place_that_cannot_be_written(refused):
     Path("file").write_text("kept")
     assert "file: this isn't a folder" in refused("weigh", "--no-figures", "-o", "file")
     assert "file/in: this isn't a folder" in refused("weigh", "--no-figures", "-o", "file/in")
@@ -316,7 +289,7 @@ def test_a_place_that_cannot_be_written():
     refused("weigh", "--no-figures", "-o", "/proc/nothing")
 
 
-def test_a_population_that_fails_makes_no_folder():
+def test_a_population_that_fails_makes_no_folder(refused):
     refused("weigh", population(COLLAPSE.replace("0.02", "0.7")), "-o", "results")
 
 
@@ -454,7 +427,7 @@ def test_help_loads_nothing_heavy():
         ("agb=marigo-2001+doherty-2014", "marigo-2001"),
     ],
 )
-def test_one_command_swaps_a_yield_set(change, shows):
+def test_one_command_swaps_a_yield_set(run, change, shows):
     text = run("weigh", "--species", "C,O", "--with", change, "--no-figures")
     assert shows in text and text != run("weigh", "--species", "C,O", "--no-figures")
     assert json.loads(run("weigh", "--species", "C,O", "--with", change, "--json")) != json.loads(
@@ -462,13 +435,13 @@ def test_one_command_swaps_a_yield_set(change, shows):
     )
 
 
-def test_swaps_that_can_not_be_made_are_refused():
+def test_swaps_that_can_not_be_made_are_refused(refused):
     assert "did you mean" in refused("weigh", "--with", "core-colapse=kobayashi-2006")
     assert "gives 2 choices" in refused("weigh", "--with", "imf=salpeter-1955,chabrier-2003")
     assert "isn't a swap" in refused("weigh", "--with", "imf")
 
 
-def test_sets_against_each_other():
+def test_sets_against_each_other(run):
     text = run(
         "show",
         "kobayashi-2006",
@@ -504,11 +477,11 @@ def test_sets_against_each_other():
         (("--figure", "x.pdf"), "--against"),
     ],
 )
-def test_comparisons_that_can_not_be_made_are_refused(arguments, says):
+def test_comparisons_that_can_not_be_made_are_refused(refused, arguments, says):
     assert says in refused("show", "kobayashi-2006", *arguments)
 
 
-def test_coverage_of_the_sets_is_drawn():
+def test_coverage_of_the_sets_is_drawn(run, refused):
     assert "written: map.svg" in run("sets", "--kind", "agb", "--figure", "map.svg")
     assert "karakas-2010" in Path("map.svg").read_text()
     assert "none of the sets" in refused("sets", "--kind", "thermonuclear", "--figure", "x.pdf")

@@ -1,4 +1,5 @@
 import json
+from functools import partial
 from pathlib import Path
 
 import pytest
@@ -11,20 +12,12 @@ runner = CliRunner()
 SWAP = ["--swap", "imf=salpeter-1955,kroupa-1993", "--swap", "thermonuclear=iwamoto-1999-*"]
 
 
-@pytest.fixture(autouse=True)
-def _elsewhere(tmp_path, monkeypatch):
-    monkeypatch.chdir(tmp_path)
-    monkeypatch.delenv("FORCE_COLOR", raising=False)
+@pytest.fixture
+def run(run):
+    return partial(run, "contrast")
 
 
-def run(*args):
-    result = runner.invoke(app, ["contrast", *args])
-    assert result.exit_code == 0, result.output
-    assert result.stderr == ""
-    return result.stdout
-
-
-def test_one_at_a_time_prints_dex_and_sentences_and_writes_nothing():
+def test_one_at_a_time_prints_dex_and_sentences_and_writes_nothing(run):
     text = run(*SWAP, "--elements", "O,Mn,Fe")
     row = next(line.split() for line in text.splitlines() if "salpeter-1955" in line)
     assert row[0] == "imf" and len(row) == 5 and all(cell[0] in "+-" for cell in row[2:])
@@ -32,7 +25,7 @@ def test_one_at_a_time_prints_dex_and_sentences_and_writes_nothing():
     assert "Shares" not in text and not list(Path().iterdir())
 
 
-def test_full_prints_what_it_is_due_to_and_writes_all_files():
+def test_full_prints_what_it_is_due_to_and_writes_all_files(run):
     text = run(*SWAP, "--full", "--elements", "Mn,Fe", "-o", "out")
     last = [line for line in text.splitlines() if line.startswith("[Mn/Fe]:")]
     assert len(last) == 1 and "dex in all" in last[0] and "% from thermonuclear" in last[0]
@@ -45,7 +38,7 @@ def test_full_prints_what_it_is_due_to_and_writes_all_files():
     assert {p.name for p in Path("plain").iterdir()} == {"contrast.csv", "contrast.tex"}
 
 
-def test_json_has_its_shape_and_nothing_else():
+def test_json_has_its_shape_and_nothing_else(run):
     text = run(*SWAP, "--full", "--elements", "O,Mn,Fe", "--ages", "1 Gyr, 13.8 Gyr", "--json")
     assert text.count("\n") == 1
     told = json.loads(text)
@@ -64,13 +57,13 @@ def test_json_has_its_shape_and_nothing_else():
     assert single["convention"] == "net" and "shares" not in single
 
 
-def test_markdown_is_a_table_only():
+def test_markdown_is_a_table_only(run):
     text = run(*SWAP, "--markdown", "--elements", "C,Fe")
     lines = text.splitlines()
     assert lines[0] == "| swapped | choice | C | Fe |" and {line.count("|") for line in lines} == {5}
 
 
-def test_population_file_and_what_is_lacking():
+def test_population_file_and_what_is_lacking(run):
     Path("mine.toml").write_text(
         'metallicity = 0.008\nspecies = ["O", "Mg"]\nages = ["1 Gyr"]\n[[source]]\nkind = "agb"\n'
         'sets = ["karakas-2010"]\n'
@@ -112,7 +105,7 @@ def test_what_cannot_be_used_is_told_on_one_line(args, says):
     assert says in result.stderr and sorted(p.name for p in Path().iterdir()) == ["taken"]
 
 
-def test_help_examples_run():
+def test_help_examples_run(run):
     result = runner.invoke(app, ["contrast", "--help"])
     assert "contrast" in COMMANDS and result.exit_code == 0
     import shlex

@@ -9,7 +9,6 @@ from typer.testing import CliRunner
 
 from steelyard.integrate.files import read_hdf5
 from steelyard.scripts import terminal
-from steelyard.scripts.main import app
 
 runner = CliRunner()
 
@@ -23,28 +22,7 @@ common = 0.5
 """
 
 
-@pytest.fixture(autouse=True)
-def _elsewhere(tmp_path, monkeypatch):
-    monkeypatch.chdir(tmp_path)
-
-
-def run(*args):
-    result = runner.invoke(app, list(args))
-    assert result.exit_code == 0, result.output
-    assert result.stderr == ""
-    return result.stdout
-
-
-def refused(*args):
-    before = sorted(Path().rglob("*"))
-    result = runner.invoke(app, list(args))
-    assert result.exit_code == 2, result.output
-    assert result.stdout == "" and result.stderr.startswith("steelyard: ") and result.stderr.count("\n") == 1
-    assert sorted(Path().rglob("*")) == before
-    return result.stderr
-
-
-def test_table_sentences_and_files():
+def test_table_sentences_and_files(run):
     text = run("leverage", "--elements", "O,Fe", "--top", "2", "-o", "out")
     lines = text.splitlines()
     iron = next(line for line in lines if line.startswith("Fe"))
@@ -62,7 +40,7 @@ def test_table_sentences_and_files():
     assert Path("out/leverage-by-mass.png").read_bytes()[:4] == b"\x89PNG"
 
 
-def test_shares_of_ranges_sum_to_a_hundred():
+def test_shares_of_ranges_sum_to_a_hundred(run):
     text = run("leverage", "-e", "C", "-e", "Mn", "--net", "--no-figures")
     rows = text.split("% of each")[1].split("follow parameters")[0].splitlines()
     cells = [
@@ -72,7 +50,7 @@ def test_shares_of_ranges_sum_to_a_hundred():
     assert np.array(cells, dtype=float).sum(axis=0) == pytest.approx([100, 100], abs=0.4)
 
 
-def test_json_is_all_that_is_printed_and_sums():
+def test_json_is_all_that_is_printed_and_sums(run):
     told = json.loads(run("leverage", "--elements", "O", "--ages", "10 Myr, 13.8 Gyr", "--net", "--json"))
     assert told["ages_yr"] == [1e7, 13.8e9] and told["convention"] == "net"
     made = sum(np.array(told["contribution"][s]["O"]).sum(axis=1) for s in told["sources"])
@@ -83,13 +61,13 @@ def test_json_is_all_that_is_printed_and_sums():
     assert not list(Path().iterdir())
 
 
-def test_young_population_says_that_nothing_is_made():
+def test_young_population_says_that_nothing_is_made(run):
     text = run("leverage", "-e", "Fe", "--ages", "1 Myr")
     assert "Fe: no published model makes any of it by then." in text
     assert "not drawn: leverage-by-mass: nothing of Fe is made" in text
 
 
-def test_own_population_file_and_its_elements():
+def test_own_population_file_and_its_elements(run):
     Path("mine.toml").write_text(
         'metallicity = 0.02\nspecies = ["Mg", "Al27"]\n'
         '[[source]]\nkind = "core-collapse"\nsets = ["kobayashi-2006"]\n'
@@ -109,11 +87,11 @@ def test_own_population_file_and_its_elements():
         (["nowhere.toml"], "there is no such file"),
     ],
 )
-def test_bad_words_are_refused(words, said):
+def test_bad_words_are_refused(refused, words, said):
     assert said in refused("leverage", *words)
 
 
-def test_weigh_prints_errors_beside_every_yield(monkeypatch):
+def test_weigh_prints_errors_beside_every_yield(run, monkeypatch):
     Path("spread.toml").write_text(SPREAD)
     words = (
         "weigh",
@@ -143,7 +121,7 @@ def test_weigh_prints_errors_beside_every_yield(monkeypatch):
     assert head == ["agb", "core-collapse", "thermonuclear", "sum", "±", "[X/Fe]", "±"]
 
 
-def test_weigh_json_holds_errors():
+def test_weigh_json_holds_errors(run):
     told = json.loads(run("weigh", "--species", "O,Fe", "--ages", "1 Gyr", "--spread", "assumed", "--json"))
     errors = told["errors"]
     whole = np.array(errors["covariance"])
@@ -160,6 +138,6 @@ def test_weigh_json_holds_errors():
         (["--spread", "assumed", "--rate"], "leave out --rate"),
     ],
 )
-def test_bad_errors_are_refused(words, said):
+def test_bad_errors_are_refused(refused, words, said):
     Path("bad.toml").write_text(SPREAD.replace("2006", "2007"))
     assert said in refused("weigh", "--no-figures", *words)

@@ -3,6 +3,7 @@
 import re
 import shlex
 import tomllib
+from functools import partial
 from html import unescape
 from pathlib import Path
 
@@ -16,29 +17,18 @@ runner = CliRunner()
 SPREAD = '[[spread]]\nset = "kobayashi-2006"\nelements = ["O"]\nsigma = 0.2\n'
 
 
-@pytest.fixture(autouse=True)
-def _elsewhere(tmp_path, monkeypatch):
-    monkeypatch.chdir(tmp_path)
+@pytest.fixture
+def run(run):
+    return partial(run, "report")
 
 
-def run(*args):
-    result = runner.invoke(app, ["report", *args])
-    assert result.exit_code == 0, result.output
-    assert result.stderr == "" and "\x1b" not in result.stdout
-    return result.stdout
+@pytest.fixture
+def refused(refused):
+    return partial(refused, "report")
 
 
 def files():
     return {path: path.read_bytes() for path in Path().rglob("*") if path.is_file()}
-
-
-def refused(*args):
-    before = files()
-    result = runner.invoke(app, ["report", *args])
-    assert result.exit_code == 2, result.output
-    assert result.stdout == "" and result.stderr.startswith("steelyard: ") and result.stderr.count("\n") == 1
-    assert files() == before
-    return result.stderr
 
 
 def block(page, name):
@@ -46,7 +36,7 @@ def block(page, name):
     return unescape(found)
 
 
-def test_a_page_makes_itself_again():
+def test_a_page_makes_itself_again(run):
     Path("errors.toml").write_text(SPREAD)
     swaps = ["--swap", "imf=salpeter-1955,chabrier-2003"]
     swaps += ["--swap", 'delay={form="exponential",timescale="1 Gyr",limits=["40 Myr","13.8 Gyr"]}']
@@ -65,7 +55,7 @@ def test_a_page_makes_itself_again():
     assert Path("report.html").read_text(encoding="utf-8") != page
 
 
-def test_help_examples_run():
+def test_help_examples_run(run):
     result = runner.invoke(app, ["report", "--help"])
     assert result.exit_code == 0 and max(map(len, result.stdout.splitlines())) <= 80
     examples = [line.strip() for line in result.stdout.splitlines() if line.startswith("    steelyard ")]
@@ -75,7 +65,7 @@ def test_help_examples_run():
     assert Path("results/report.html").exists() and Path("report.html").exists()
 
 
-def test_refuses_in_one_line_and_writes_nothing():
+def test_refuses_in_one_line_and_writes_nothing(refused):
     Path("empty.toml").write_text("")
     Path("a-file").write_text("")
     Path("young.toml").write_text(

@@ -9,37 +9,13 @@ import pytest
 from typer.testing import CliRunner
 
 from steelyard.integrate.popfile import default_population
-from steelyard.scripts.main import app
 
 runner = CliRunner()
 
 SMALL = ("scatter", "--mass", "100", "--count", "60", "--species", "O,Fe")
 
 
-@pytest.fixture(autouse=True)
-def _elsewhere(tmp_path, monkeypatch):
-    monkeypatch.chdir(tmp_path)
-    monkeypatch.delenv("FORCE_COLOR", raising=False)
-
-
-def run(*args):
-    result = runner.invoke(app, list(args))
-    assert result.exit_code == 0, result.output
-    assert result.stderr == ""
-    return result.stdout
-
-
-def refused(*args):
-    result = runner.invoke(app, list(args))
-    assert result.exit_code == 2, result.output
-    assert result.stdout == ""
-    line = result.stderr
-    assert line.startswith("steelyard: ") and line.count("\n") == 1
-    assert "Traceback" not in line and not list(Path().iterdir())
-    return line
-
-
-def test_json_holds_the_exact_law_and_the_sample():
+def test_json_holds_the_exact_law_and_the_sample(run):
     found = json.loads(run(*SMALL, "--json"))
     assert (found["mass"], found["count"], found["seed"], found["mode"]) == (100, 60, 1, "poisson")
     assert len(found["ages_yr"]) == 20 and found["species"] == ["O", "Fe"]
@@ -54,7 +30,7 @@ def test_json_holds_the_exact_law_and_the_sample():
     assert not list(Path().iterdir())
 
 
-def test_files_and_table():
+def test_files_and_table(run):
     text = run(*SMALL, "--output", "out", "--ages", "30 Myr, 13.8 Gyr", "--ratio", "O/Fe", "--workers", "2")
     assert sorted(p.name for p in Path("out").iterdir()) == [
         "ratio-scatter.pdf",
@@ -72,7 +48,7 @@ def test_files_and_table():
     assert row[1] == f"{mean:.3e}"
 
 
-def test_a_seed_gives_the_same_bytes():
+def test_a_seed_gives_the_same_bytes(run):
     for name, workers in (("a", "1"), ("b", "3")):
         run(*SMALL, "-o", name, "--no-figures", "--seed", "5", "--workers", workers)
     for name in ("scatter.h5", "scatter.csv"):
@@ -82,11 +58,11 @@ def test_a_seed_gives_the_same_bytes():
 @pytest.mark.parametrize(
     ("mode", "says"), [("number", "number of stars is rounded"), ("mass", "0 per Msun born")]
 )
-def test_biases_are_told(mode, says):
+def test_biases_are_told(run, mode, says):
     assert says in run(*SMALL, "--mode", mode, "--no-figures")
 
 
-def test_a_population_file_gives_its_ages_and_species():
+def test_a_population_file_gives_its_ages_and_species(run):
     Path("mine.toml").write_text(
         'metallicity = 0.02\nspecies = ["O", "Mg"]\nages = ["20 Myr"]\n'
         '[[source]]\nkind = "core-collapse"\nsets = ["kobayashi-2006"]\n'
@@ -95,7 +71,7 @@ def test_a_population_file_gives_its_ages_and_species():
     assert found["ages_yr"] == [2e7] and found["convention"] == "net" and found["species"] == ["O", "Mg"]
 
 
-def test_a_young_population_has_no_figure_but_a_table():
+def test_a_young_population_has_no_figure_but_a_table(run):
     text = run(*SMALL, "--ages", "1 Myr", "-o", "out")
     assert "not drawn: ratio-scatter: [O/Fe] of the ejecta isn't defined" in text
     assert "eject nothing by the last age" in text
@@ -120,5 +96,5 @@ def test_a_young_population_has_no_figure_but_a_table():
         (("--count", "100000000", "--mass", "1"), "GiB"),
     ],
 )
-def test_refusals(arguments, says):
+def test_refusals(refused, arguments, says):
     assert says in refused("scatter", "--species", "O,Fe", *arguments)

@@ -1,5 +1,6 @@
 """`steelyard typeset`: what it prints, writes and refuses."""
 
+from functools import partial
 from pathlib import Path
 
 import pandas as pd
@@ -13,28 +14,17 @@ from steelyard.scripts.main import app
 runner = CliRunner()
 
 
-@pytest.fixture(autouse=True)
-def _elsewhere(tmp_path, monkeypatch):
-    monkeypatch.chdir(tmp_path)
+@pytest.fixture
+def run(run):
+    return partial(run, "typeset")
 
 
-def run(*args):
-    result = runner.invoke(app, ["typeset", *args])
-    assert result.exit_code == 0, result.output
-    assert result.stderr == "" and "\x1b" not in result.stdout
-    return result.stdout
+@pytest.fixture
+def refused(refused):
+    return partial(refused, "typeset")
 
 
-def refused(*args):
-    before = {path: path.read_bytes() for path in Path().rglob("*") if path.is_file()}
-    result = runner.invoke(app, ["typeset", *args])
-    assert result.exit_code == 2, result.output
-    assert result.stdout == "" and result.stderr.startswith("steelyard: ") and result.stderr.count("\n") == 1
-    assert {path: path.read_bytes() for path in Path().rglob("*") if path.is_file()} == before
-    return result.stderr
-
-
-def test_a_table_alone_is_printed():
+def test_a_table_alone_is_printed(run):
     text = run("--elements", "Fe,O", "--digits", "4")
     rows = [line.split(" & ")[0] for line in text.splitlines() if line.endswith(r"\\")]
     assert rows == ["Species", "Fe", "O"]
@@ -47,7 +37,7 @@ def test_a_table_alone_is_printed():
     )
 
 
-def test_files_of_a_paper():
+def test_files_of_a_paper(run):
     shown = run("-f", "deluxetable", "--spread", "assumed", "-o", "y.tex", "--bibtex", "y.bib")
     assert "We weighted" in shown and "written: y.tex, y.bib" in shown
     assert r"\pm" in Path("y.tex").read_text() and "@article{Kroupa2001" in Path("y.bib").read_text()
@@ -57,7 +47,7 @@ def test_files_of_a_paper():
     assert sorted(p.name for p in Path().iterdir()) == ["y.bib", "y.tex"]
 
 
-def test_forms_for_machines():
+def test_forms_for_machines(run):
     for _ in range(2):
         run("-f", "mrt", "--ages", "30 Myr, 1 Gyr", "--sources", "agb,sum", "-o", "y.txt")
         run("-f", "cds", "--elements", "O,Fe", "--digits", "5", "-o", "deep")
@@ -69,7 +59,7 @@ def test_forms_for_machines():
     assert list(pd.read_csv("y.csv", comment="#")["sum"]) == list(data["sum"])
 
 
-def test_a_population_file_and_the_methods():
+def test_a_population_file_and_the_methods(run):
     Path("mine.toml").write_text(template().replace("metallicity = 0.014", "metallicity = 0.004", 1))
     text = run("mine.toml", "--methods", "-f", "csv", "--net")
     assert text.count("\n") == 1 and "metallicity Z = 0.004" in text and "published net yields" in text
@@ -77,7 +67,7 @@ def test_a_population_file_and_the_methods():
     assert r"\citet{" in run("--methods", "-f", "deluxetable")
 
 
-def test_refusals():
+def test_refusals(refused):
     Path("paper.tex").write_text("\\documentclass{article}")
     Path("refs.bib").write_text("@article{mine}")
     assert "no file of steelyard's" in refused("-o", "paper.tex")
