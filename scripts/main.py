@@ -29,6 +29,16 @@ COMMANDS = {
     "scatter": "Draw populations star by star: how far chance goes.",
 }
 
+#: those that leave tables or pages of a population, and whether their -o names a folder
+RECORDED = {
+    "weigh": True,
+    "typeset": False,
+    "contrast": True,
+    "leverage": True,
+    "scatter": True,
+    "report": True,
+}
+
 # typer carries click inside itself, or beside itself in its older versions, and passes on this leaf only
 ClickException = next(c for c in typer.BadParameter.__mro__ if c.__name__ == "ClickException")
 
@@ -39,10 +49,10 @@ SETTINGS = {"help_option_names": ["-h", "--help"], "max_content_width": 100}
 
 def single(name: str) -> Any:
     """Return a command by its name, imported now; outputs of some say how they were made."""
-    from steelyard.scripts import recorded
-
     alone = typer.Typer(add_completion=False, rich_markup_mode=None)
-    kind = recorded.RecordedCommand if name in recorded.COMMANDS else TyperCommand
+    kind = TyperCommand
+    if name in RECORDED:
+        from steelyard.scripts.recorded import RecordedCommand as kind
     module = import_module(f"steelyard.scripts.{name}")
     alone.command(name, cls=kind, context_settings=SETTINGS)(module.command)
     return typer.main.get_command(alone)

@@ -19,16 +19,6 @@ from steelyard.integrate.record import Record, is_figure, read_record, read_text
 from steelyard.scripts.given import ASSUMED
 from steelyard.yields.errors import InputError
 
-#: commands that make tables and pages, and whether -o names a folder
-COMMANDS = {
-    "weigh": True,
-    "typeset": False,
-    "contrast": True,
-    "leverage": True,
-    "scatter": True,
-    "report": True,
-}
-
 POPULATION, SPREAD = "population.toml", "spread.toml"
 
 #: options that an output doesn't depend on, or that are in its population already
@@ -95,6 +85,8 @@ def again(path: Path) -> tuple[bool, str]:
     InputError
         It doesn't say how it was made, or what it says isn't a command that makes tables.
     """
+    from steelyard.scripts.main import RECORDED
+
     record = read_record(path)
     words = _checked(record, path)
     with TemporaryDirectory() as name:
@@ -104,7 +96,7 @@ def again(path: Path) -> tuple[bool, str]:
         out = folder / "out"
         out.mkdir()
         # a table's description names its own file
-        target = out if COMMANDS[words[0]] or path.name == "ReadMe" else out / path.name
+        target = out if RECORDED[words[0]] or path.name == "ReadMe" else out / path.name
         places = {POPULATION: str(folder / POPULATION), SPREAD: str(folder / SPREAD)}
         failed = _run([places.get(word, word) for word in words] + ["--output", str(target)])
         if failed:
@@ -137,14 +129,14 @@ def _pictured(path: Path, fresh: Path) -> tuple[bool, str]:
 
 def _checked(record: Record, path: Path) -> list[str]:
     """The words of a command from a file, which may say anything."""
-    from steelyard.scripts.main import single
+    from steelyard.scripts.main import RECORDED, single
 
     mend = "give the file as steelyard wrote it"
     try:
         words = shlex.split(record.command)
     except ValueError:
         words = []
-    if words[:1] not in [[name] for name in COMMANDS]:
+    if words[:1] not in [[name] for name in RECORDED]:
         raise InputError(f"{record.command[:60]!r} makes no table", where=str(path), mend=mend)
     if words.count(POPULATION) != 1 or words[1] != POPULATION:
         raise InputError("its command is of no population", where=str(path), mend=mend)
@@ -235,10 +227,10 @@ def _figures_differ(mine: str | None, new: str | None) -> str:
     """How the figures of two lines differ; empty where they don't."""
     if new is None:
         return ""  # a line that was added
-    wanted = _FIGURE.findall(new)
+    wanted = _figures(new)
     if mine is None:
         return f"is missing: {new.strip()[:60]}" if wanted else ""
-    found = _FIGURE.findall(mine)
+    found = _figures(mine)
     if len(found) < len(wanted):
         return f"has {len(found)} figures, not {len(wanted)}"
     # what was added to a line, such as a title, stands before or after its figures
@@ -246,6 +238,11 @@ def _figures_differ(mine: str | None, new: str | None) -> str:
         if a != b and abs(float(a) - float(b)) > SAME * max(abs(float(a)), abs(float(b))):
             return f"has {a}, not {b}"
     return ""
+
+
+def _figures(line: str) -> list[str]:
+    # pages print the sign that is as wide as a plus
+    return _FIGURE.findall(line.replace("\N{MINUS SIGN}", "-"))
 
 
 def _bare(text: str) -> str:

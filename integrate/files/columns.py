@@ -38,6 +38,18 @@ def filled(arrays: dict[str, Array], z: Array, t: Array, names: Mapping[str, Any
     return arrays
 
 
+def refuse_errors(held: StoredYields, path: str | Path) -> None:
+    """Refuse a result with errors, whose covariances no table has a place for.
+
+    Raises
+    ------
+    InputError
+        It has.
+    """
+    if "spread" in held.attributes:
+        raise InputError("covariances have no place in a table", where=str(path), mend="write HDF5 or netCDF")
+
+
 def as_text(held: StoredYields) -> dict[str, str]:
     """Return attributes as text: lists as lines, numbers with all their digits."""
     return {

@@ -8,6 +8,7 @@ from typing import Any
 
 from steelyard.yields.errors import InputError, nearest
 
+from .columns import refuse_errors
 from .hdf5 import read_hdf5, write_stored
 from .layout import StoredYields
 from .long import read_ecsv, read_long_csv, write_ecsv, write_long_csv
@@ -85,4 +86,6 @@ def write_as(held: StoredYields, path: str | Path, form: str) -> None:
     """
     if form not in FORMATS:
         raise InputError(f"format {form!r} isn't known", mend=nearest(form, FORMATS))
+    if form not in ("hdf5", "netcdf"):
+        refuse_errors(held, path)
     FORMATS[form][0](held, path)

@@ -239,6 +239,7 @@ def test_the_command_is_told_in_the_file_and_forgotten_after():
         ("a 1.0\nb", False),
         ("a 1.0\nand more\nb 2.0", True),
         ("a 1.0\nc 2.0", True),
+        ("a 1.0\nb \u22122.0", False),
     ],
 )
 def test_comparing(text, same):

@@ -15,6 +15,7 @@ from steelyard.integrate.files import FORMATS, agrees, format_of, read_stored, s
 from steelyard.integrate.files.layout import DATASETS, SCALES
 from steelyard.integrate.handoff import handoff, write_handoff
 from steelyard.integrate.popfile import population_to_toml
+from steelyard.integrate.spread import assumed
 from steelyard.yields.errors import InputError
 
 SPECIES = ["H", "O", "Al26", "Fe"]
@@ -205,3 +206,16 @@ def test_lines_that_hold_at_some_metallicities_say_where(made):
     assert held and all(line.endswith("(at Z = 0)") for line in held)
     assert json.dumps(told)  # plain values
     assert "lifetimes: portinari-1998" in told["policies"]
+
+
+def test_errors_go_with_their_yields_or_are_refused(form, tmp_path):
+    stars = Population(0.02, [StellarSource("core-collapse", ["kobayashi-2006"])], species=["O"], ages=[1e9])
+    held = stored(stars.weigh(), assumed(stars).propagate(stars.weigh()))
+    if form in ("hdf5", "netcdf"):
+        write_as(held, tmp_path / "y", form)
+        assert np.array_equal(read_stored(tmp_path / "y").arrays["covariance"], held.arrays["covariance"])
+        assert agrees(tmp_path / "y")[0]
+    else:
+        with pytest.raises(InputError, match="covariances"):
+            write_as(held, tmp_path / "y", form)
+        assert not list(tmp_path.iterdir())
