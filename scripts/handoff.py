@@ -13,6 +13,16 @@ from steelyard.yields.units import plain
 
 FORMATS = ("hdf5", "netcdf", "fits", "votable", "ecsv", "csv")
 
+#: what a file's ending says of its form
+ENDINGS = {
+    ".nc": "netcdf",
+    ".fits": "fits",
+    ".vot": "votable",
+    ".xml": "votable",
+    ".ecsv": "ecsv",
+    ".csv": "csv",
+}
+
 
 def command(
     file: str = given.POPULATION,
@@ -25,7 +35,9 @@ def command(
     error: float = typer.Option(1e-2, metavar="E", help="Bound on the error of linear interpolation."),
     species: str = given.SPECIES,
     changes: list[str] = given.WITH,
-    form: str = typer.Option("hdf5", "--format", metavar="|".join(FORMATS), help="Form of the file."),
+    form: str = typer.Option(
+        "", "--format", metavar="|".join(FORMATS), help="Form of the file. Default: by its ending, else hdf5."
+    ),
     output: str = typer.Option(..., "--output", "-o", metavar="FILE", help="File to write."),
 ) -> None:
     """Write yields over metallicity, age, source and species to a file for another code.
@@ -36,13 +48,15 @@ def command(
     \b
     Examples:
       steelyard handoff --species O,Fe --error 0.05 -o yields.h5
-      steelyard handoff --metallicities 0.004,0.02 --ages "10 Myr, 1 Gyr" --format csv -o yields.csv
+      steelyard handoff --metallicities 0.004,0.02 --ages "10 Myr, 1 Gyr" -o yields.csv
+      steelyard handoff --species O,Fe --error 0.05 --format netcdf -o yields.nc
     """
     from steelyard.integrate.handoff import handoff, write_handoff
 
+    path = Path(output)
+    form = form or ENDINGS.get(path.suffix.casefold(), "hdf5")
     if form not in FORMATS:
         raise InputError(f"format {form!r} isn't known", where="--format", mend=nearest(form, FORMATS))
-    path = Path(output)
     # before the work, not after
     if not path.parent.is_dir():
         raise InputError(f"there is no folder {path.parent}", where=output, mend="make it first")

@@ -10,6 +10,7 @@ import numpy as np
 import pytest
 from typer.testing import CliRunner
 
+from steelyard.integrate.files import format_of
 from steelyard.scripts.main import app
 
 runner = CliRunner()
@@ -77,3 +78,20 @@ def test_a_file_of_ours_is_replaced_and_another_one_is_not(form, tmp_path):
     result = runner.invoke(app, words)
     assert result.exit_code == 2 and "isn't replaced" in result.stderr
     assert path.read_text() == "my paper"
+
+
+@pytest.mark.parametrize(
+    ("name", "form"),
+    [
+        ("y.h5", "hdf5"),
+        ("y.nc", "netcdf"),
+        ("y.fits", "fits"),
+        ("y.vot", "votable"),
+        ("y.csv", "csv"),
+        ("y", "hdf5"),
+    ],
+)
+def test_the_ending_says_the_form(name, form, tmp_path):
+    short = ["--species", "O", "--metallicities", "0.004,0.02", "--ages", "10 Myr, 1 Gyr"]
+    assert runner.invoke(app, ["handoff", *short, "-o", str(tmp_path / name)]).exit_code == 0
+    assert format_of(tmp_path / name) == form
