@@ -9,32 +9,15 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from ..build import YEARS
-from ..composition import mixture
 from ..errors import InputError
-from ..library import DEFAULT_SOLAR
 from ..nuclides import parse
 from ..readers import figure
-from ..units import plain
 from .declared import Layout, Value
 from .models import Gathered, Model
 from .reading import Reading, Table
+from .scales import factor_of, metallicities
 
 Array = NDArray[np.float64]
-
-#: units as byte-by-byte descriptions and papers write them
-ALIASES = {
-    "solMass": "Msun",
-    "Msol": "Msun",
-    "msun": "Msun",
-    "M_sun": "Msun",
-    "M_Sun": "Msun",
-    "Msolar": "Msun",
-    "solar mass": "Msun",
-    "a": "yr",
-    "Gyr": "Gyr",
-}
-NO_UNIT = ("", "---", "--", "-", "1", "dimensionless")
 
 
 def readings(
@@ -172,7 +155,7 @@ def _figures(
     if not np.all(np.isfinite(numbers)):
         raise InputError(f"{value.convention} isn't finite", where=layout.name, mend="check log10 and units")
     if value.convention in ("net", "total") and not value.per_initial_mass:
-        factor = _factor(
+        factor = factor_of(
             value.unit, gathered.units.get(value.convention, ""), "Msun", value.convention, warnings
         )
         if factor != 1.0:
@@ -254,10 +237,10 @@ def _own_figures(models: Sequence[Model], gathered: Gathered, layout: Layout, wa
         printed = np.array([float(figure(row[j]) or 0.0) for row in text])
         numbers = 10.0**printed if spec.log10 else printed
         if name == "metallicity":
-            numbers = _metallicity(numbers, spec.scale, spec.solar, layout)
+            numbers = metallicities(numbers, spec.scale, spec.solar, layout)
         else:
             unit = "yr" if name == "lifetime" else "Msun"
-            numbers = numbers * _factor(spec.unit, gathered.units.get(name, ""), unit, name, warnings)
+            numbers = numbers * factor_of(spec.unit, gathered.units.get(name, ""), unit, name, warnings)
         if not np.array_equal(numbers, printed):
             converted.add(name)
         figures[:, j] = numbers
@@ -268,44 +251,6 @@ def _own_figures(models: Sequence[Model], gathered: Gathered, layout: Layout, wa
         names[j] = "final_mass"
         converted = (converted - {"wind"}) | {"final_mass"}
     return Table(tuple(names), tuple(tuple(r) for r in text), figures, frozenset(converted))
-
-
-def _metallicity(numbers: Array, scale: str, solar: float | None, layout: Layout) -> Array:
-    sun = solar if solar is not None else mixture(layout.birth.get("mixture", DEFAULT_SOLAR)).Z
-    if scale == "[Fe/H]":
-        numbers = sun * 10.0**numbers
-    elif scale == "Z/Zsun":
-        numbers = sun * numbers
-    if numbers.min() < 0 or numbers.max() >= 0.5:
-        worst = numbers.min() if numbers.min() < 0 else numbers.max()
-        raise InputError(
-            f"metallicity {worst:g} is no mass fraction",
-            where=f"{layout.name} [model] metallicity",
-            mend='say scale = "[Fe/H]" or "Z/Zsun", or log10 = true',
-        )
-    return numbers
-
-
-def _factor(given: str, declared: str, unit: str, what: str, warnings: list[str]) -> float:
-    """How many `unit` one unit of a column is; the layout's word goes before the file's."""
-    chosen = given or declared.strip()
-    if chosen in NO_UNIT:
-        return 1.0
-    if not given and chosen.startswith("["):
-        warnings.append(
-            f"{what} stands in {declared}: brackets mean a logarithm, which log10 = true would undo"
-        )
-        return 1.0
-    chosen = ALIASES.get(chosen, chosen)
-    if chosen in (unit, "M☉", "M⊙") or (unit == "yr" and chosen in YEARS):
-        return YEARS.get(chosen, 1.0) if unit == "yr" else 1.0
-    try:
-        return float(plain(f"1 {chosen}", unit, what))
-    except InputError as error:
-        if given or "dimension" in error.what:
-            raise
-    warnings.append(f"the file's unit {declared!r} of {what} isn't known; taken as {unit}")
-    return 1.0
 
 
 def _initial(
