@@ -169,7 +169,8 @@ def handoff(
                 [_is_wide(a, b) and draft.across(a, b, age_nodes, CHECKED) > place for a, b in _pairs(zs)]
             )
         if not bad_age.any() and not bad_z.any():
-            checked = max(draft.measured(a, b, age_nodes) for a, b in _pairs(zs) if _is_wide(a, b))
+            wide = [(a, b) for a, b in _pairs(zs) if _is_wide(a, b)] or [(z, z) for z in zs]
+            checked = max(draft.measured(a, b, age_nodes) for a, b in wide)
             if checked <= error or (fixed or not chosen):
                 break
             place *= 0.7

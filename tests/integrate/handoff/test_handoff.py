@@ -76,6 +76,11 @@ def test_hdf5(made, tmp_path):
         assert file.attrs["error_checked"] == made.checked
 
 
+def test_two_metallicities_that_hardly_differ_are_told_by_their_ages(population):
+    made = handoff(population, [0.01, 0.01 * (1 + 1e-9)], [1e7, 1e8, 1e9], chosen=False)
+    assert 0.01 < made.checked < 1
+
+
 def test_a_metal_free_population_is_interpolated_straight_next_to_0(population):
     made = handoff(population, (0.0, 0.001), error=0.05)
     assert made.metallicities[0] == 0 and made.checked <= 0.05
