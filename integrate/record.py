@@ -3,10 +3,10 @@
 from __future__ import annotations
 
 import re
+import warnings
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 from html import unescape
-from html.parser import HTMLParser
 from pathlib import Path
 
 from steelyard.yields.errors import InputError
@@ -16,7 +16,15 @@ from .provenance import MADE_BY
 #: byte; more isn't a table or a page
 LARGEST = 2**28
 
+_MEND = "give it as steelyard wrote it"
+
 _POPULATION, _ERRORS = "population file:", "errors:"
+
+#: the population's heading as it stands in comments and in indented text
+_HEADING = re.compile(rf"^(?:[#%]|   ) {_POPULATION}\r?$".encode(), re.MULTILINE)
+
+#: signs after a backslash in a PDF
+_SIGNS = {b"n": b"\n", b"r": b"\r", b"t": b"\t"}
 
 
 @dataclass(frozen=True)
@@ -47,8 +55,7 @@ def is_output(path: str | Path) -> bool:
         return False
     if Path(path).suffix.casefold() in _DESCRIBED:
         return b"steelyard" in head
-    marked = any(f"{sign} {_POPULATION}\n".encode() in head for sign in ("#", "%", "   "))
-    return marked or (head.startswith(b"<!DOCTYPE html>") and b"steelyard" in head)
+    return bool(_HEADING.search(head)) or (head.startswith(b"<!DOCTYPE html>") and b"steelyard" in head)
 
 
 def read_record(path: str | Path) -> Record:
@@ -72,13 +79,9 @@ def read_record(path: str | Path) -> Record:
     read = _DESCRIBED.get(Path(path).suffix.casefold(), read_text)
     text = read(path)
     if text.startswith("<!DOCTYPE html>"):
-        found = _Page()
-        found.feed(text)
-        commands = found.blocks.get("Commands", "").splitlines()
+        commands = _on_page(text, "Commands").splitlines()
         command = commands[-1].removeprefix("steelyard ") if commands else ""
-        record = Record(
-            command, found.blocks.get("Population file", ""), found.blocks.get("Stated errors", "")
-        )
+        record = Record(command, _on_page(text, "Population file"), _on_page(text, "Stated errors"))
     else:
         lines = list(_unfolded(text.split("\n")))
         said = (line.partition(MADE_BY)[2] for line in lines if MADE_BY in line)
@@ -101,53 +104,53 @@ def read_text(path: str | Path) -> str:
     InputError
         It is no file, no text, or too large.
     """
+    data = _bytes(path)
+    try:
+        text = data.decode("utf-8-sig")
+    except UnicodeDecodeError as error:
+        raise InputError(f"byte {error.start} isn't text in UTF-8", where=str(path), mend=_MEND) from None
+    # other systems end lines, and begin texts, in other ways
+    return text.replace("\r\n", "\n").replace("\r", "\n")
+
+
+def _bytes(path: str | Path) -> bytes:
     where = str(path)
     try:
-        if Path(path).stat().st_size > LARGEST:
-            raise InputError("the file is too large", where=where, mend=f"give one under {LARGEST >> 20} MiB")
-        return Path(path).read_text(encoding="utf-8")
-    except UnicodeDecodeError as error:
-        raise InputError(
-            f"byte {error.start} isn't text in UTF-8", where=where, mend="give it as steelyard wrote it"
-        ) from None
+        with Path(path).open("rb") as file:
+            data = file.read(LARGEST + 1)
     except OSError as error:
         raise InputError(f"can't be read: {error.strerror}", where=where, mend="check its name") from None
+    if len(data) > LARGEST:
+        raise InputError("the file is too large", where=where, mend=f"give one under {LARGEST >> 20} MiB")
+    return data
 
 
 def _of_png(path: str | Path) -> str:
     from PIL import Image, UnidentifiedImageError
 
+    unusable = (OSError, UnidentifiedImageError, ValueError, SyntaxError)
+    too_large = (Image.DecompressionBombError, Image.DecompressionBombWarning)
     try:
-        with Image.open(path) as image:
-            return str(image.info.get("Description", ""))
-    except (OSError, UnidentifiedImageError, ValueError, SyntaxError) as error:
-        raise _no_picture(path, error) from None
+        with warnings.catch_warnings():
+            warnings.simplefilter("error", Image.DecompressionBombWarning)
+            with Image.open(path) as image:
+                return str(image.info.get("Description", ""))
+    except (*unusable, *too_large) as error:
+        why = " ".join(str(error).split())[:200]
+        raise InputError(f"the picture can't be read: {why}", where=str(path), mend=_MEND) from None
 
 
 def _of_svg(path: str | Path) -> str:
-    found = re.search(r"<dc:description>(.*?)</dc:description>", read_text(path), re.DOTALL)
-    return unescape(found[1]) if found else ""
+    return unescape(_between(read_text(path), "<dc:description>", "</dc:description>"))
 
 
 def _of_pdf(path: str | Path) -> str:
     """The subject of a PDF as matplotlib writes it: text in parentheses, or UTF-16 with its mark."""
-    try:
-        data = Path(path).read_bytes()
-    except OSError as error:
-        raise _no_picture(path, error) from None
-    found = re.search(rb"/Subject \(((?:[^()\\]|\\.)*)\)", data, re.DOTALL)
+    found = re.search(rb"/Subject \(((?:[^()\\]|\\.)*+)\)", _bytes(path), re.DOTALL)
     if not found:
         return ""
-    signs = {b"n": b"\n", b"r": b"\r", b"t": b"\t"}
-    text = re.sub(rb"\\(.)", lambda m: signs.get(m[1], m[1]), found[1], flags=re.DOTALL)
-    return text.decode("utf-16") if text.startswith(b"\xfe\xff") else text.decode("latin-1")
-
-
-def _no_picture(path: str | Path, error: Exception) -> InputError:
-    why = " ".join(str(error).split())[:200]
-    return InputError(
-        f"the picture can't be read: {why}", where=str(path), mend="give it as steelyard wrote it"
-    )
+    text = re.sub(rb"\\(.)", lambda m: _SIGNS.get(m[1], m[1]), found[1], flags=re.DOTALL)
+    return text.decode("utf-16" if text.startswith(b"\xfe\xff") else "latin-1", errors="replace")
 
 
 #: figures, whose description says how they were made
@@ -161,14 +164,14 @@ def is_figure(path: str | Path) -> bool:
 
 def _unfolded(lines: Sequence[str]) -> Iterator[str]:
     """Lines with those joined that were folded after a backslash."""
-    held = ""
+    held: list[str] = []
     for line in lines:
-        whole = f"{held} {line.strip()}" if held else line
-        if whole.endswith(" \\"):
-            held = whole[:-2]
+        part = line.strip() if held else line
+        if part.endswith(" \\"):
+            held.append(part[:-2])
             continue
-        held = ""
-        yield whole
+        yield " ".join([*held, part])
+        held = []
 
 
 def _block(lines: Sequence[str], heading: str) -> str:
@@ -183,26 +186,18 @@ def _block(lines: Sequence[str], heading: str) -> str:
         if not inside:
             break
         out.append(line[len(before) + 4 :])
-    return "\n".join(out)
+    return "\n".join(out).rstrip("\n")
 
 
-class _Page(HTMLParser):
-    """The blocks of code of a page, by their names."""
+def _on_page(text: str, name: str) -> str:
+    """A block of code of a page, by its name."""
+    from .reporting.markup import code
 
-    def __init__(self) -> None:
-        super().__init__()
-        self.blocks: dict[str, str] = {}
-        self._name = ""
+    begin, end = code("\0", name).split("\0")
+    return unescape(_between(text, begin, end))
 
-    def handle_starttag(self, tag: str, attrs: list[tuple[str, str | None]]) -> None:
-        if tag == "pre":
-            self._name = dict(attrs).get("aria-label") or ""
-            self.blocks[self._name] = ""
 
-    def handle_endtag(self, tag: str) -> None:
-        if tag == "pre":
-            self._name = ""
-
-    def handle_data(self, data: str) -> None:
-        if self._name:
-            self.blocks[self._name] += data
+def _between(text: str, begin: str, end: str) -> str:
+    """What stands between two marks for the first time; empty where one of them doesn't."""
+    inside, closed, _ = text.partition(begin)[2].partition(end)
+    return inside if closed else ""

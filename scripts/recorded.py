@@ -3,11 +3,10 @@
 from __future__ import annotations
 
 import io
-import re
 import shlex
 from collections.abc import Iterator
 from contextlib import redirect_stderr, redirect_stdout
-from difflib import SequenceMatcher
+from contextvars import ContextVar
 from pathlib import Path
 from tempfile import TemporaryDirectory
 from typing import Any
@@ -26,16 +25,14 @@ _APART = frozenset(
     {"output", "bibtex", "json", "markdown", "methods", "explained", "schema", "workers", "changes"}
 )
 
-#: digits agree where figures differ by less than this of their value
-SAME = 1e-12
+#: the two files of the CDS: the second tells of the first
+DATA, README = "yields.dat", "ReadMe"
 
-#: lines that tell their own story where they differ
-_SET = re.compile(r"[#%\s]*set (\S+) sha256\b")
-_VERSION = re.compile(r"steelyard \d[\w.]*")
-_FIGURE = re.compile(r"(?<![A-Za-z0-9_.])[-+]?\d+(?:\.\d+)?(?:[eE][-+]?\d+)?(?![A-Za-z0-9_])")
+#: signs of a command in a file
+LONGEST = 100_000
 
-#: lines of a file that are compared by their likeness where some were added or taken out
-_MOST = 20_000
+#: the command that is made again, as its output tells it
+_TOLD: ContextVar[str] = ContextVar("told", default="")
 
 
 class RecordedCommand(TyperCommand):
@@ -43,7 +40,7 @@ class RecordedCommand(TyperCommand):
 
     def invoke(self, ctx: Any) -> Any:
         """Run it."""
-        with made_by(shlex.join(self._words(ctx))):
+        with made_by(_TOLD.get() or shlex.join(self._words(ctx))):
             return super().invoke(ctx)
 
     def _words(self, ctx: Any) -> Iterator[str]:
@@ -85,7 +82,7 @@ def again(path: Path) -> tuple[bool, str]:
     InputError
         It doesn't say how it was made, or what it says isn't a command that makes tables.
     """
-    from steelyard.scripts.main import RECORDED
+    from steelyard.scripts.main import RECORDED, single
 
     record = read_record(path)
     words = _checked(record, path)
@@ -96,35 +93,69 @@ def again(path: Path) -> tuple[bool, str]:
         out = folder / "out"
         out.mkdir()
         # a table's description names its own file
-        target = out if RECORDED[words[0]] or path.name == "ReadMe" else out / path.name
+        target = out if RECORDED[words[0]] or "cds" in words else out / path.name
         places = {POPULATION: str(folder / POPULATION), SPREAD: str(folder / SPREAD)}
-        failed = _run([places.get(word, word) for word in words] + ["--output", str(target)])
+        words = [*(places.get(word, word) for word in words), "--output", str(target)]
+        if not is_figure(path) and any(
+            "--no-figures" in one.secondary_opts for one in single(words[0]).params
+        ):
+            words.append("--no-figures")
+        failed = _run(words, record.command)
         if failed:
-            return False, f"{path}: can't be made again: {failed}"
-        fresh = out / path.name
-        if not fresh.is_file():
-            made = ", ".join(sorted(one.name for one in out.iterdir() if one.suffix == path.suffix))
-            raise InputError(
-                f"its command makes no file of this name, but {made}",
-                where=str(path),
-                mend="give it the name that it was written by",
-            )
+            return False, f"{path}: can't be made again: {failed.replace(f'{folder}/', '')}"
+        made = sorted(one for one in out.iterdir() if is_figure(one) == is_figure(path))
         if is_figure(path):
-            return _pictured(path, fresh)
-        same, message = compared(read_text(path), read_text(fresh))
-        beside = path.with_name("yields.dat")
-        if same and path.name == "ReadMe" and beside.is_file():
-            same, message = compared(read_text(beside), read_text(out / beside.name))
-    return same, f"{path}: made again, {message}"
+            return _pictured(path, [one for one in made if one.suffix == path.suffix.casefold()])
+        pairs = [(path, _counterpart(path, [one for one in made if one.suffix != ".h5"]))]
+        beside = path.with_name(DATA)
+        if pairs[0][1].name == README and beside.is_file():
+            pairs.append((beside, out / DATA))
+        return _compared(pairs)
 
 
-def _pictured(path: Path, fresh: Path) -> tuple[bool, str]:
-    if path.read_bytes() == fresh.read_bytes():
-        return True, f"{path}: drawn again, it agrees to the last byte"
+def _compared(pairs: list[tuple[Path, Path]]) -> tuple[bool, str]:
+    """Compare files with the same made again; the least that is to be said of any."""
+    from steelyard.scripts.comparing import compared, kind_of
+
+    told = []
+    for path, fresh in pairs:
+        text, new = read_text(path), read_text(fresh)
+        same, message = compared(text, new, kind_of(new, fresh.name))
+        if text == new and path.read_bytes() != fresh.read_bytes():
+            message = "it agrees but for how its lines end"
+        renamed = "" if path.name == fresh.name else f" as {fresh.name}"
+        told.append((same, text == new, f"{path}: made again{renamed}, {message}"))
+    same, _, message = min(told, key=lambda one: one[:2])
+    return same, message
+
+
+def _counterpart(path: Path, made: list[Path]) -> Path:
+    """Which of the files that a command makes this is: by its name, or if it got another by its lines."""
+    lines = set(read_text(path).split("\n"))
+
+    def alike(fresh: Path) -> tuple[bool, bool, int]:
+        shared = len(lines.intersection(read_text(fresh).split("\n")))
+        return fresh.name == path.name, fresh.suffix == path.suffix, shared
+
+    return max(made, key=alike)
+
+
+def _pictured(path: Path, made: list[Path]) -> tuple[bool, str]:
+    """Compare a figure with those that its command draws."""
+    if not made:
+        raise InputError(
+            f"its command draws no {path.suffix}", where=str(path), mend="give the file as steelyard wrote it"
+        )
+    named = [one for one in made if one.name == path.name] or made
+    fresh = next((one for one in named if one.read_bytes() == path.read_bytes()), None)
+    if fresh is not None:
+        renamed = "" if path.name == fresh.name else f" as {fresh.name}"
+        return True, f"{path}: drawn again{renamed}, it agrees to the last byte"
     from matplotlib import __version__
 
+    other = "" if named[0].name == path.name else f" from {', '.join(one.name for one in named)}"
     why = f"perhaps it was drawn by another matplotlib than {__version__}"
-    return False, f"{path}: drawn again, the picture differs; {why}"
+    return False, f"{path}: drawn again, the picture differs{other}; {why}"
 
 
 def _checked(record: Record, path: Path) -> list[str]:
@@ -132,6 +163,8 @@ def _checked(record: Record, path: Path) -> list[str]:
     from steelyard.scripts.main import RECORDED, single
 
     mend = "give the file as steelyard wrote it"
+    if len(record.command) > LONGEST:
+        raise InputError(f"its command is longer than {LONGEST} signs", where=str(path), mend=mend)
     try:
         words = shlex.split(record.command)
     except ValueError:
@@ -157,94 +190,15 @@ def _checked(record: Record, path: Path) -> list[str]:
     return out
 
 
-def _run(words: list[str]) -> str:
-    """Run a command in this process; what it complains of, empty where it doesn't."""
+def _run(words: list[str], command: str) -> str:
+    """Run a command in this process, told of as it was; what it complains of, empty where it doesn't."""
     from steelyard.scripts.main import app
 
     told = io.StringIO()
-    with redirect_stdout(io.StringIO()), redirect_stderr(told):
-        status = app(words, prog_name="steelyard", standalone_mode=False)
+    token = _TOLD.set(command)
+    try:
+        with redirect_stdout(io.StringIO()), redirect_stderr(told):
+            status = app(words, prog_name="steelyard", standalone_mode=False)
+    finally:
+        _TOLD.reset(token)
     return told.getvalue().strip().removeprefix("steelyard: ") if status else ""
-
-
-def compared(text: str, fresh: str) -> tuple[bool, str]:
-    """Compare an output with the same made again.
-
-    Parameters
-    ----------
-    text, fresh : str
-
-    Returns
-    -------
-    same : bool
-        Whether all figures agree to 1e-12, rounded ones in all their digits.
-    message : str
-        How well, or where they differ first.
-
-    Examples
-    --------
-    >>> compared("O 1.67e-03", "O 1.68e-03")
-    (False, 'the digits differ: line 1 has 1.67e-03, not 1.68e-03')
-    >>> compared("Our table: O 1.67e-03", "O 1.67e-03")
-    (True, 'the digits agree; text was edited, first in line 1')
-    """
-    if text == fresh:
-        return True, "it agrees to the last byte"
-    edited = 0
-    reasons: list[str] = []
-    for at, mine, new in _differing(text.split("\n"), fresh.split("\n")):
-        own_set = _SET.match(mine or "")
-        if own_set and _SET.match(new or ""):
-            reasons.append(f"the figures of {own_set[1]} aren't those it was made with")
-            continue
-        if mine and new and _VERSION.search(mine) and _VERSION.sub("", mine) == _VERSION.sub("", new):
-            reasons.append(f"written by {_VERSION.search(mine)[0]}")  # type: ignore[index]
-            continue
-        differ = _figures_differ(mine, new)
-        if differ:
-            because = f" ({'; '.join(dict.fromkeys(reasons))})" if reasons else ""
-            return False, f"the digits differ: line {at} {differ}{because}"
-        edited = edited or at
-    told = [f"text was edited, first in line {edited}"] if edited and _bare(text) != _bare(fresh) else []
-    return True, "; ".join(["the digits agree", *told, *dict.fromkeys(reasons)])
-
-
-def _differing(mine: list[str], new: list[str]) -> Iterator[tuple[int, str | None, str | None]]:
-    """Lines that differ, by the number of the file's own line; None where one has no such line."""
-    if len(mine) == len(new) or max(len(mine), len(new)) > _MOST:
-        for i in range(max(len(mine), len(new))):
-            pair = (mine[i] if i < len(mine) else None, new[i] if i < len(new) else None)
-            if pair[0] != pair[1]:
-                yield i + 1, *pair
-        return
-    for tag, a, b, c, d in SequenceMatcher(None, mine, new, autojunk=False).get_opcodes():
-        if tag != "equal":
-            for k in range(max(b - a, d - c)):
-                yield a + k + 1, mine[a + k] if a + k < b else None, new[c + k] if c + k < d else None
-
-
-def _figures_differ(mine: str | None, new: str | None) -> str:
-    """How the figures of two lines differ; empty where they don't."""
-    if new is None:
-        return ""  # a line that was added
-    wanted = _figures(new)
-    if mine is None:
-        return f"is missing: {new.strip()[:60]}" if wanted else ""
-    found = _figures(mine)
-    if len(found) < len(wanted):
-        return f"has {len(found)} figures, not {len(wanted)}"
-    # what was added to a line, such as a title, stands before or after its figures
-    for a, b in zip(found[: len(wanted)], wanted, strict=True):
-        if a != b and abs(float(a) - float(b)) > SAME * max(abs(float(a)), abs(float(b))):
-            return f"has {a}, not {b}"
-    return ""
-
-
-def _figures(line: str) -> list[str]:
-    # pages print the sign that is as wide as a plus
-    return _FIGURE.findall(line.replace("\N{MINUS SIGN}", "-"))
-
-
-def _bare(text: str) -> str:
-    """Text without its figures, versions and checksums."""
-    return _FIGURE.sub("0", _VERSION.sub("", re.sub(r"\b[0-9a-f]{64}\b", "", text)))

@@ -85,6 +85,7 @@ def command(
       steelyard weigh --species O,Mg,Fe --json
       steelyard weigh --with core-collapse=limongi-chieffi-2018-R-v150 -o other
       steelyard weigh --species C,O,Mg,Fe --spread assumed --no-figures
+      steelyard weigh results/yields.csv
     """
     if explained or schema:
         _write_help(file, output, schema)

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import tomllib
 from pathlib import Path
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 from steelyard.yields.errors import InputError
 
@@ -12,11 +12,26 @@ from ..files.again import SAME, changes, compare
 from ..files.labelled import plain
 from ..provenance import attributes
 from .run import scatter
-from .store import FORMAT, FORMAT_VERSION, arrays
+from .store import DATASETS, FORMAT, FORMAT_VERSION, SCALES, arrays, scales
+
+if TYPE_CHECKING:
+    import h5py
 
 _MEND = "give a file as `steelyard scatter` wrote it"
 
-_ASKED = {"mass": float, "count": int, "seed": int, "mode": str, "convention": str, "population": str}
+#: bytes of a file's datasets
+LARGEST = 2**33
+
+_ASKED = {
+    "mass": float,
+    "count": int,
+    "seed": int,
+    "mode": str,
+    "convention": str,
+    "population": str,
+    "sets": tuple,
+    "set_checksums": tuple,
+}
 
 
 def is_scatter(path: str | Path) -> bool:
@@ -59,13 +74,22 @@ def agrees(path: str | Path) -> tuple[bool, str]:
         asked = [told[name] for name in ("mass", "count", "seed", "mode")]
         more = {"convention": told["convention"], "survivors": "born" in held}
         drawn = scatter(population, *asked, ages=held["time"].tolist(), **more)
-        fresh = {name: values for name, values in arrays(drawn).items() if name in held}
+        fresh = arrays(drawn)
     except (ValueError, RecursionError) as error:
         return False, f"{path}: can't be drawn again: {' '.join(str(error).split())}"
     why = changes(told, attributes(drawn.population.weigh(drawn.ages)))
     because = f" ({'; '.join(why)})" if why else ""
+    names, numbers = {}, {}
+    for name, values in scales(drawn).items():
+        (names if isinstance(values, tuple) else numbers)[name] = values
+    for name, values in names.items():
+        if held.get(name, ()) != values:
+            return False, f"{path}: drawn again, it has another list of {name}{because}"
+    fresh |= numbers
     for name, values in fresh.items():
-        if values.shape != held[name].shape:
+        if name not in held:
+            return False, f"{path}: drawn again, it has {name}, which the file lacks{because}"
+        if isinstance(held[name], tuple) or values.shape != held[name].shape:
             return False, f"{path}: drawn again, {name} has another shape{because}"
     found = compare(fresh, {name: held[name] for name in fresh})
     if found.worst > SAME:
@@ -75,19 +99,41 @@ def agrees(path: str | Path) -> tuple[bool, str]:
 
 
 def _read(path: str | Path) -> tuple[dict[str, Any], dict[str, Any]]:
+    """Read attributes, and datasets: arrays of numbers, tuples of names."""
     import h5py
 
     where = str(path)
     try:
         with h5py.File(path, "r") as file:
             told = {name: plain(value) for name, value in file.attrs.items()}
-            held = {name: item[()] for name, item in file.items() if isinstance(item, h5py.Dataset)}
+            held = _datasets(file, where)
     except (OSError, KeyError, ValueError, TypeError, RuntimeError, MemoryError) as error:
+        if isinstance(error, InputError):
+            raise
         raise InputError(f"the file can't be read: {str(error)[:200]}", where=where, mend=_MEND) from None
     if told.get("format") != FORMAT or told.get("format_version") != FORMAT_VERSION:
         raise InputError("this file holds no populations drawn", where=where, mend=_MEND)
     lacks = [name for name, kind in _ASKED.items() if not isinstance(told.get(name), kind)]
-    lacks += [name for name in ("time", "yields", "ejected") if name not in held]
+    lacks += [name for name in ("time", "yields", "ejected") if isinstance(held.get(name, ()), tuple)]
     if lacks:
-        raise InputError(f"{lacks[0]!r} is missing", where=where, mend=_MEND)
+        raise InputError(f"{lacks[0]!r} is missing, or of another kind", where=where, mend=_MEND)
     return told, held
+
+
+def _datasets(file: h5py.File, where: str) -> dict[str, Any]:
+    import h5py
+
+    known = {name: file[name] for name in (*SCALES, *DATASETS) if name in file}
+    found = {
+        name: one for name, one in known.items() if isinstance(one, h5py.Dataset) and one.shape is not None
+    }
+    if sum(one.size * one.dtype.itemsize for one in found.values()) > LARGEST:
+        raise InputError(f"its datasets hold more than {LARGEST >> 30} GiB", where=where, mend=_MEND)
+    out = {}
+    for name, one in found.items():
+        values = plain(one[()]) if one.dtype.kind in "SO" and name in SCALES else one[()]
+        named = isinstance(values, tuple) and all(isinstance(each, str) for each in values)
+        if not named and one.dtype.kind not in "fiu":
+            raise InputError(f"{name!r} holds neither numbers nor names", where=where, mend=_MEND)
+        out[name] = values
+    return out

@@ -94,14 +94,7 @@ def _fill(file: h5py.File, drawn: ScatteredYields) -> None:
     told |= {name: getattr(drawn, name) for name in ("mode", "convention", "count", "seed")}
     for name, value in told.items():
         attach(file, name, value)
-    scales = {
-        "time": drawn.ages,
-        "source": tuple(drawn.sources),
-        "species": tuple(drawn.species),
-        "event": tuple(drawn.event_kinds),
-        "quantile": np.array(LEVELS),
-    }
-    for name, values in scales.items():
+    for name, values in scales(drawn).items():
         if len(values):
             put(file, name, values, SCALES[name])
     held = arrays(drawn)
@@ -117,6 +110,17 @@ def _fill(file: h5py.File, drawn: ScatteredYields) -> None:
             how["shuffle"] = True
         told_of = entry.description.format(convention=drawn.convention)
         put(file, name, values, replace(entry, description=told_of), **how)
+
+
+def scales(drawn: ScatteredYields) -> dict[str, Any]:
+    """Return what the dimensions of the datasets run over, by name: numbers, or names."""
+    return {
+        "time": drawn.ages,
+        "source": tuple(drawn.sources),
+        "species": tuple(drawn.species),
+        "event": tuple(drawn.event_kinds),
+        "quantile": np.array(LEVELS),
+    }
 
 
 def arrays(drawn: ScatteredYields) -> dict[str, Any]:
